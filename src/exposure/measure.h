@@ -1,0 +1,30 @@
+#pragma once
+
+#include "camera/camera.h"
+#include "exposure/digest.h"
+#include "exposure/frame.h"
+#include "sky/stars.h"
+
+namespace straymark {
+
+/// How much of the pixels a digest keeps.
+struct DigestPolicy {
+    /// Pixels brighter than this many times the amplifier's noise are kept; 3 or more.
+    double floor_sigma = 5.0;
+};
+
+/// Reads every amplifier of `frame` once and keeps what matters: bias and overscan removed
+/// robustly, noise, sky, bright and saturated runs, bleed, stars, PSF. Amplifiers in parallel. An
+/// amplifier that cannot be read or says nothing is recorded as missing or unusable with its
+/// reason. Deterministic for any number of threads.
+DetectorDigest measure_detector(const Camera& camera, int detector, DetectorFrame& frame,
+                                const DigestPolicy& policy, int threads);
+
+/// Detectors without a PSF of their own take the median of the others' (source: neighbours).
+void share_psf(ExposureDigest& digest);
+
+/// Shift and rotation from the listed stars (header WCS first, if it already fits). Sets
+/// digest.pointing and digest.transparency; states why where too few stars match.
+void refine_pointing(const Camera& camera, const StarList* stars, ExposureDigest& digest);
+
+}  // namespace straymark
