@@ -1,2 +1,6 @@
 #include "artifacts/artifact.h"
-namespace straymark { std::span<const Artifact> registry() { return {}; } }
+namespace straymark {
+std::span<const Artifact> registry() {
+    return {};
+}
+}  // namespace straymark

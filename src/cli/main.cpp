@@ -1,1 +1,44 @@
-int main() { return 0; }
+#include <cstdio>
+#include <exception>
+#include <new>
+
+#include "cli/command.h"
+#include "core/error.h"
+
+namespace {
+
+using namespace straymark;
+using namespace straymark::cli;
+
+int run(int argc, char** argv) {
+    CommandLine line;
+    line.app.description(
+        "Predicts what bright stars leave on the wrong pixels of an exposure, and writes it as "
+        "masks.");
+    line.app.name("straymark");
+    line.app.require_subcommand(1);
+    line.app.set_version_flag("--version", "straymark " STRAYMARK_VERSION);
+    try {
+        line.app.parse(argc, argv);
+    } catch (const CLI::ParseError& error) {
+        return line.app.exit(error) == 0 ? kDone : kWrongUse;
+    }
+    return line.run();
+}
+
+}  // namespace
+
+int main(int argc, char** argv) {
+    try {
+        return run(argc, argv);
+    } catch (const UsageError& error) {
+        complain(error.what());
+        return kWrongUse;
+    } catch (const std::bad_alloc&) {
+        complain("out of memory");
+        return kFailed;
+    } catch (const std::exception& error) {
+        complain(error.what());
+        return kFailed;
+    }
+}
