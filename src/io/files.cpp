@@ -12,6 +12,7 @@
 #include <sys/stat.h>
 #include <sys/uio.h>
 #include <system_error>
+#include <utility>
 #include <unistd.h>
 #include <xxhash.h>
 
