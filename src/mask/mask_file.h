@@ -29,8 +29,7 @@ struct MarkRow {
 struct DetectionRow {
     std::string detector, amplifier, state, reason, psf_source;
     double noise_e = 0.0, sky_e = 0.0, gain = 0.0, fwhm_px = 0.0, noise_equivalent_area_px = 0.0;
-    double floor_e = 0.0;              ///< source pixels fainter than this were not summed
-    double truncation_response = 0.0;  ///< bound on the response lost by that
+    double floor_e = 0.0;  ///< source pixels fainter than this are not in the digest
     int psf_stars = 0;
 };
 
@@ -38,6 +37,7 @@ struct DetectionRow {
 struct AssessedRow {
     std::string detector, predictor, state, reason, calibration;
     double flagged_fraction = 0.0, marginal_fraction = 0.0, unassessed_fraction = 0.0;
+    double truncation_response = 0.0;  ///< bound on the response of what was too faint to be summed
 };
 
 /// A card of the primary header: keyword (8 characters at most), value, comment.

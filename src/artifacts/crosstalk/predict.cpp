@@ -120,6 +120,7 @@ private:
     void add_victim(int victim, DetectorMarks& marks, FaintEchoes& faint) const;
     void add_pair(int victim, int source, const Sensitivity& sensitivity, DetectorMarks& marks,
                   FaintEchoes& faint) const;
+    [[nodiscard]] double truncation_of(int victim, int source, const Sensitivity& sensitivity) const;
     void add_blob_mark(int victim, int source, const SourceBlob& blob, const EchoPath& path,
                        const EchoTerms& terms, DetectorMarks& marks) const;
     void add_unknown(int victim, const Sensitivity& sensitivity, DetectorMarks& marks) const;
@@ -215,8 +216,20 @@ void CrosstalkPrediction::add_victim(int victim, DetectorMarks& marks, FaintEcho
         if (sources_[static_cast<std::size_t>(source)]) {
             add_pair(victim, source, sensitivity, marks, faint);
         }
+        marks.assessment.truncation_response =
+            std::max(marks.assessment.truncation_response,
+                     truncation_of(victim, source, sensitivity));
     }
     add_unknown(victim, sensitivity, marks);
+}
+
+double CrosstalkPrediction::truncation_of(int victim, int source,
+                                          const Sensitivity& sensitivity) const {
+    const Pair& pair = params_.pair(victim, source);
+    const double gain = camera_.amplifier(params_.ref(victim)).gain_e_per_adu;
+    const double floor_adu = digest_of(source).floor_adu;
+    const double left_out_e = EchoTerms::estimate(pair, params_.extras(pair), gain).bound(floor_adu);
+    return std::max(kTruncation * context_.threshold, left_out_e * sensitivity.per_plateau_e());
 }
 
 void CrosstalkPrediction::add_pair(int victim, int source, const Sensitivity& sensitivity,
