@@ -33,6 +33,15 @@ struct DetectionRow {
     int psf_stars = 0;
 };
 
+/// One row of the PSF table: the point-spread function that the responses on a detector rest on.
+struct PsfRow {
+    std::string detector, source;
+    int stars = 0;
+    double fwhm_px = 0.0, noise_equivalent_area_px = 0.0;
+    int radius_px = 0;
+    std::vector<float> values;  ///< as Psf::values
+};
+
 /// One row of the ASSESSED table.
 struct AssessedRow {
     std::string detector, predictor, state, reason, calibration;
@@ -51,6 +60,7 @@ struct MaskFileTables {
     DecisionSettings settings;
     std::vector<MarkRow> marks;
     std::vector<DetectionRow> detection;
+    std::vector<PsfRow> psfs;
     std::vector<AssessedRow> assessed;
 };
 
