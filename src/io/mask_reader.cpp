@@ -130,6 +130,7 @@ std::vector<MarkRow> MaskFile::marks() const {
         .fill("y2", &MarkRow::y2)
         .fill("strength_e", &MarkRow::strength_e)
         .fill("error_e", &MarkRow::error_e)
+        .fill("peak_e", &MarkRow::peak_e, true)
         .fill("response", &MarkRow::response)
         .fill("response_error", &MarkRow::response_error)
         .fill("significance", &MarkRow::significance, true)
@@ -151,7 +152,6 @@ std::vector<DetectionRow> MaskFile::detection() const {
         .fill("fwhm_px", &DetectionRow::fwhm_px, true)
         .fill("noise_equivalent_area_px", &DetectionRow::noise_equivalent_area_px, true)
         .fill("floor_e", &DetectionRow::floor_e, true)
-        .fill("truncation_response", &DetectionRow::truncation_response, true)
         .fill("psf_stars", &DetectionRow::psf_stars)
         .take();
 }
@@ -166,6 +166,7 @@ std::vector<AssessedRow> MaskFile::assessed() const {
         .fill("flagged_fraction", &AssessedRow::flagged_fraction)
         .fill("marginal_fraction", &AssessedRow::marginal_fraction)
         .fill("unassessed_fraction", &AssessedRow::unassessed_fraction)
+        .fill("truncation_response", &AssessedRow::truncation_response, true)
         .take();
 }
 

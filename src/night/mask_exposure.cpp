@@ -200,6 +200,7 @@ void write_masks(const Site& site, MaskStore& store, const PredictorsInForce& pr
             };
             append(tables.marks, parts[i].marks);
             append(tables.detection, parts[i].detection);
+            append(tables.psfs, parts[i].psfs);
             append(tables.assessed, parts[i].assessed);
             fractions.pixels += part_fractions[i].pixels;
             fractions.flagged += part_fractions[i].flagged;

@@ -185,6 +185,9 @@ void append_rows(const Site& site, int detector, const DetectorDigest& digest,
              static_cast<double>(outcome.unassessed_px) / pixels, assessment.truncation_response});
     }
     append_detection(described, digest, tables.detection);
+    const Psf& psf = digest.psf;
+    tables.psfs.push_back({described.id, name_of(psf.source), psf.stars, psf.fwhm_px,
+                           psf.noise_equivalent_area_px, psf.radius, psf.values});
 }
 
 }  // namespace straymark
