@@ -150,7 +150,7 @@ struct Camera {
     /// "DETECTOR/AMPLIFIER", the name used in products and messages.
     [[nodiscard]] std::string amplifier_name(AmplifierRef ref) const;
     [[nodiscard]] std::optional<int> detector_index(const std::string& id) const;
-    [[nodiscard]] std::optional<AmplifierRef> amplifier_ref(const std::string& name) const;
+    [[nodiscard]] std::optional<AmplifierRef> amplifier_ref(const std::string& full_name) const;
     /// All live amplifiers read in step with each other, by clock name.
     [[nodiscard]] std::map<std::string, std::vector<AmplifierRef>> clock_groups() const;
 };

@@ -12,8 +12,8 @@
 #include <sys/stat.h>
 #include <sys/uio.h>
 #include <system_error>
-#include <utility>
 #include <unistd.h>
+#include <utility>
 #include <xxhash.h>
 
 #include "core/error.h"
@@ -72,6 +72,15 @@ InputFile::InputFile(std::string path) : path_(std::move(path)) {
         throw InputError({path_, "", std::generic_category().message(errno),
                           "a file that can be read", "check the name and its permissions"});
     }
+    take_size();
+}
+
+InputFile::InputFile(FileHandle handle, std::string path)
+    : path_(std::move(path)), handle_(std::move(handle)) {
+    take_size();
+}
+
+void InputFile::take_size() {
     struct stat status {};
     if (::fstat(handle_.get(), &status) != 0 || !S_ISREG(status.st_mode)) {
         throw InputError({path_, "", S_ISDIR(status.st_mode) ? "a folder" : "a pipe or device",

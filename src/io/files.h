@@ -35,12 +35,18 @@ public:
     /// Opens exactly `path` for reading. Throws InputError where it does not exist, is not a
     /// regular file (FIFO, device, folder) or may not be read. Never waits, expands nothing.
     explicit InputFile(std::string path);
+    /// Bytes that have no name of their own (what was decoded from `path`); messages name `path`.
+    InputFile(FileHandle handle, std::string path);
     [[nodiscard]] const std::string& path() const { return path_; }
     [[nodiscard]] std::int64_t size() const { return size_; }  ///< when it was opened
     /// Fills `out` from `offset`. Throws InputError where the file ends first.
     void read_at(std::int64_t offset, std::span<std::byte> out) const;
+    /// To hand on to a child process.
+    [[nodiscard]] int descriptor() const { return handle_.get(); }
 
 private:
+    void take_size();
+
     std::string path_;
     FileHandle handle_;
     std::int64_t size_ = 0;
