@@ -90,6 +90,7 @@ struct Assessment {
     AssessmentState state = AssessmentState::off;
     std::string reason;       ///< why off, partly or not
     std::string calibration;  ///< product used
+    double truncation_response = 0.0;  ///< what was left out of the sum could respond with this at most
 };
 
 /// All that one predictor says about one detector.

@@ -57,6 +57,7 @@ FitsUnit marks_unit(const std::vector<MarkRow>& rows) {
                                 column("y2", kPixel, rows, &MarkRow::y2),
                                 column("strength_e", kElectron, rows, &MarkRow::strength_e),
                                 column("error_e", kElectron, rows, &MarkRow::error_e),
+                                column("peak_e", kElectron, rows, &MarkRow::peak_e),
                                 column("response", "", rows, &MarkRow::response),
                                 column("response_error", "", rows, &MarkRow::response_error),
                                 column("significance", "", rows, &MarkRow::significance),
@@ -86,7 +87,6 @@ FitsUnit detection_unit(const std::vector<DetectionRow>& rows, const DecisionSet
         column("fwhm_px", kPixel, rows, &DetectionRow::fwhm_px),
         column("noise_equivalent_area_px", kPixel, rows, &DetectionRow::noise_equivalent_area_px),
         column("floor_e", kElectron, rows, &DetectionRow::floor_e),
-        column("truncation_response", "", rows, &DetectionRow::truncation_response),
         constant("background_px", kPixel, rows.size(), std::int32_t{settings.background_px}),
         constant("template_noise", "", rows.size(), settings.template_noise)};
     for (std::size_t kind = 0; kind < kThresholdColumns.size(); ++kind) {
@@ -116,7 +116,9 @@ FitsUnit assessed_unit(const std::vector<AssessedRow>& rows) {
                        column("calibration", "", rows, &AssessedRow::calibration),
                        column("flagged_fraction", "", rows, &AssessedRow::flagged_fraction),
                        column("marginal_fraction", "", rows, &AssessedRow::marginal_fraction),
-                       column("unassessed_fraction", "", rows, &AssessedRow::unassessed_fraction)});
+                       column("unassessed_fraction", "", rows, &AssessedRow::unassessed_fraction),
+                       column("truncation_response", "", rows,
+                              &AssessedRow::truncation_response)});
 }
 
 }  // namespace

@@ -25,7 +25,8 @@ struct MarkOutcome {
     double response = 0.0;        ///< of largest magnitude, signed, of this mark alone
     double response_error = 0.0;  ///< 1 sigma, at that pixel
     DetectorPixel peak;           ///< where
-    std::int64_t area_px = 0;     ///< flagged pixels to which it contributes over a hundredth of T
+    double peak_e = 0.0;          ///< of the signal, largest in magnitude, electrons per pixel
+    std::int64_t area_px = 0;     ///< flagged pixels within its bounds grown by one FWHM
 };
 
 /// One artifact on one detector.

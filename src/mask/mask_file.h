@@ -13,11 +13,13 @@ namespace straymark {
 /// One row of the MARKS table. Positions are FITS pixels (1-based) here: this is what people read.
 struct MarkRow {
     std::string kind, detector, cause, source, shape, calibration,
-        status;                             ///< status: measured | unmeasured
-    double source_x = 0.0, source_y = 0.0;  ///< NaN: none
-    double x = 0.0, y = 0.0;                ///< where the mark's own response is largest
-    int x1 = 0, x2 = 0, y1 = 0, y2 = 0;     ///< bounding box, inclusive
-    double strength_e = 0.0, error_e = 0.0, response = 0.0, response_error = 0.0;
+        status;                              ///< status: measured | unmeasured
+    double source_x = 0.0, source_y = 0.0;   ///< NaN: none
+    double x = 0.0, y = 0.0;                 ///< where the mark's own response is largest
+    int x1 = 0, x2 = 0, y1 = 0, y2 = 0;      ///< bounding box, inclusive
+    double strength_e = 0.0, error_e = 0.0;  ///< total, 1 sigma
+    double peak_e = 0.0;                     ///< largest per pixel
+    double response = 0.0, response_error = 0.0;
     double significance = 0.0;  ///< |strength| / error
     std::int64_t area_px = 0;
     std::int64_t count = 1;  ///< marks summed in this row ("many faint")
@@ -27,8 +29,7 @@ struct MarkRow {
 struct DetectionRow {
     std::string detector, amplifier, state, reason, psf_source;
     double noise_e = 0.0, sky_e = 0.0, gain = 0.0, fwhm_px = 0.0, noise_equivalent_area_px = 0.0;
-    double floor_e = 0.0;              ///< source pixels fainter than this were not summed
-    double truncation_response = 0.0;  ///< bound on the response lost by that
+    double floor_e = 0.0;  ///< source pixels fainter than this are not in the digest
     int psf_stars = 0;
 };
 
@@ -45,6 +46,7 @@ struct PsfRow {
 struct AssessedRow {
     std::string detector, predictor, state, reason, calibration;
     double flagged_fraction = 0.0, marginal_fraction = 0.0, unassessed_fraction = 0.0;
+    double truncation_response = 0.0;  ///< bound on the response of what was too faint to be summed
 };
 
 /// A card of the primary header: keyword (8 characters at most), value, comment.

@@ -26,7 +26,9 @@ public:
     static bool present(const std::vector<std::string>& cards);
 
     [[nodiscard]] SkyPoint sky_from_detector(DetectorPoint point) const;
-    [[nodiscard]] DetectorPoint detector_from_sky(SkyPoint point) const;
+    /// Nothing where the solution does not reach: 90 degrees or more from its reference point, or
+    /// where a distortion polynomial cannot be inverted.
+    [[nodiscard]] std::optional<DetectorPoint> detector_from_sky(SkyPoint point) const;
     /// The cards that were used, for the mask file.
     [[nodiscard]] const std::vector<std::string>& cards() const;
 
