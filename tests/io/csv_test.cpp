@@ -1,6 +1,7 @@
 #include "io/csv.h"
 
 #include <catch2/catch.hpp>
+#include <fmt/format.h>
 
 #include "core/error.h"
 #include "io/temporary_folder.h"
@@ -81,7 +82,25 @@ TEST_CASE("a file that is not a table is refused, saying why") {
     }
 }
 
-TEST_CASE("bytes of value zero do not hide the rest of a line") {
+TEST_CASE("a byte of value zero does not hide the rest of a line") {
     const TemporaryFolder folder;
-    CHECK_FALSE(message_of(folder.write("a.csv", std::string("a,b\n1,2\0003,4\n", 13))).empty());
+    const std::string row("1,2\0,3\n", 7);
+    CHECK_THAT(message_of(folder.write("a.csv", "a,b\n" + row)),
+               Catch::Contains("line 2: found a byte of value zero"));
+}
+
+TEST_CASE("lines may cross the blocks in which a file is read, and a byte order mark is skipped") {
+    const TemporaryFolder folder;
+    std::string text = "\xEF\xBB\xBFname,value\n";
+    for (int i = 0; i < 30000; ++i) {
+        text += fmt::format("row{},{}\n", i, i);
+    }
+    CsvReader table(folder.write("a.csv", text));
+    REQUIRE(table.column("name") == 0);
+    for (int i = 0; i < 30000; ++i) {
+        REQUIRE(table.next());
+        REQUIRE(table.field(0) == fmt::format("row{}", i));
+        REQUIRE(table.integer(1) == i);
+    }
+    CHECK_FALSE(table.next());
 }
