@@ -39,7 +39,7 @@ public:
         }
         const std::optional<std::int64_t> number = value ? value->integer() : std::nullopt;
         if (!number || *number < low || *number > high) {
-            refuse(keyword, value ? "'" + printable(value->text) + "'" : "no such card",
+            refuse(keyword, value ? quoted(value->text) : "no such card",
                    fmt::format("an integer from {} to {}", low, high));
         }
         return *number;
@@ -51,7 +51,7 @@ public:
         }
         const std::optional<double> number = value->number();
         if (!number) {
-            refuse(keyword, "'" + printable(value->text) + "'", "a number");
+            refuse(keyword, quoted(value->text), "a number");
         }
         return *number;
     }
@@ -184,7 +184,7 @@ void check_start(const InputFile& file) {
     if (start != kStart) {
         throw InputError({file.path(), "byte 0",
                           file.size() < kFitsBlockBytes ? fmt::format("{} bytes", file.size())
-                                                        : "'" + printable(start) + "'",
+                                                        : quoted(start),
                           "a FITS file, which begins with 'SIMPLE  =' and has 2880 bytes or more",
                           "give a raw exposure in FITS"});
     }
@@ -267,7 +267,7 @@ FitsStructure scan_fits(const InputFile& file) {
         std::int64_t cards = 0;
         const FitsHeader header = header_at(file, offset, place, cards);
         if (number > 0 && !is_xtension(header.card(0))) {
-            throw InputError({file.path(), place, "'" + printable(header.card(0)) + "'",
+            throw InputError({file.path(), place, quoted(header.card(0)),
                               "a card XTENSION", "the header is damaged; fetch the file again"});
         }
         FitsHdu hdu = described_hdu(header, number == 0, file.path(), place);
