@@ -77,11 +77,11 @@ public:
     /// An image extension.
     template <typename T>
     FitsBuilder& image(const std::string& name, int width, int height, const std::vector<T>& values,
-                       std::vector<std::string> cards = {}) {
-        cards.insert(cards.begin(), text_card("EXTNAME", name));
-        cards.insert(cards.begin(), card("GCOUNT", "1"));
-        cards.insert(cards.begin(), card("PCOUNT", "0"));
-        append(text_card("XTENSION", "IMAGE"), width, height, values, cards);
+                       const std::vector<std::string>& cards = {}) {
+        std::vector<std::string> all{card("PCOUNT", "0"), card("GCOUNT", "1"),
+                                     text_card("EXTNAME", name)};
+        all.insert(all.end(), cards.begin(), cards.end());
+        append(text_card("XTENSION", "IMAGE"), width, height, values, all);
         return *this;
     }
     [[nodiscard]] const std::string& bytes() const { return bytes_; }
