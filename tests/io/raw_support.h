@@ -11,6 +11,15 @@
 
 namespace straymark::test {
 
+inline Amplifier half_detector(const std::string& id, const std::string& suffix, PixelBox section,
+                               Corner corner, int prescan) {
+    Amplifier amplifier;
+    amplifier.id = id;
+    amplifier.suffix = suffix;
+    amplifier.readout = {section, corner, SerialAxis::x, prescan};
+    return amplifier;
+}
+
 /// `detectors` detectors of 8 x 6 pixels, two amplifiers each: a01 the left half, read from the
 /// lower left; a02 the right half, read from the upper right.
 inline Camera small_camera(int detectors = 1, int prescan = 0) {
@@ -34,15 +43,9 @@ inline Camera small_camera(int detectors = 1, int prescan = 0) {
         detector.id = fmt::format("d{}", d + 1);
         detector.width = 8;
         detector.height = 6;
-        Amplifier left;
-        left.id = "a01";
-        left.suffix = "A";
-        left.readout = {PixelBox{0, 0, 4, 6}, Corner::lower_left, SerialAxis::x, prescan};
-        Amplifier right;
-        right.id = "a02";
-        right.suffix = "B";
-        right.readout = {PixelBox{4, 0, 8, 6}, Corner::upper_right, SerialAxis::x, prescan};
-        detector.amplifiers = {left, right};
+        detector.amplifiers = {
+            half_detector("a01", "A", {0, 0, 4, 6}, Corner::lower_left, prescan),
+            half_detector("a02", "B", {4, 0, 8, 6}, Corner::upper_right, prescan)};
         camera.detectors.push_back(detector);
     }
     return camera;
