@@ -118,9 +118,9 @@ struct HeaderKeywords {
 
 enum class PixelOrder { unstated, readout, detector };
 
-/// How raw files lay out pixels. `hdu` is a pattern with {detector}, {amplifier}, {number}: the
-/// EXTNAME of the image, or "primary". The section entries name a keyword ({detector},
-/// {amplifier}, {suffix} are replaced), or give a literal section when they begin with '['.
+/// How raw files lay out pixels. `hdu` is a pattern for the EXTNAME of the image, or "primary". The
+/// section entries name a keyword, or give a literal section when they begin with '['. In each of
+/// them {detector}, {amplifier}, {suffix} and {number} are replaced (docs/camera_file.md).
 struct RawLayout {
     std::string hdu;
     std::optional<std::string> data, bias, prescan, detector_section;

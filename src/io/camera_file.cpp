@@ -199,9 +199,11 @@ HeaderKeywords read_headers(const YamlValue& value) {
     return headers;
 }
 
-/// `text` without its placeholders; refuses one that is not among `known`.
-std::string without_placeholders(const YamlValue& value, const std::string& text,
-                                 const std::vector<std::string_view>& known) {
+constexpr std::array<std::string_view, 4> kPlaceholders{"{detector}", "{amplifier}", "{suffix}",
+                                                        "{number}"};
+
+/// `text` without its placeholders; refuses one that is not known.
+std::string without_placeholders(const YamlValue& value, const std::string& text) {
     std::string rest;
     for (std::size_t at = 0; at < text.size();) {
         if (text[at] == '}') {
@@ -214,8 +216,9 @@ std::string without_placeholders(const YamlValue& value, const std::string& text
         const std::size_t end = text.find('}', at);
         const std::string_view placeholder =
             std::string_view(text).substr(at, end == std::string::npos ? end : end + 1 - at);
-        if (std::find(known.begin(), known.end(), placeholder) == known.end()) {
-            value.refuse(fmt::format("only the placeholders {}", fmt::join(known, ", ")));
+        if (std::find(kPlaceholders.begin(), kPlaceholders.end(), placeholder) ==
+            kPlaceholders.end()) {
+            value.refuse(fmt::format("only the placeholders {}", fmt::join(kPlaceholders, ", ")));
         }
         at += placeholder.size();
     }
@@ -258,15 +261,14 @@ std::string read_section_source(const YamlValue& value) {
         }
         return text;
     }
-    const std::string rest =
-        without_placeholders(value, text, {"{detector}", "{amplifier}", "{suffix}"});
+    const std::string rest = without_placeholders(value, text);
     const bool standard =
         rest.size() <= 8 && std::all_of(rest.begin(), rest.end(), [](unsigned char c) {
             return (c >= '0' && c <= '9') || (c >= 'A' && c <= 'Z') || c == '_' || c == '-';
         });
     if (!standard && !rest.starts_with("HIERARCH ")) {
         value.refuse(
-            "a FITS keyword, with {detector}, {amplifier}, {suffix} where needed, or a "
+            "a FITS keyword, with placeholders where needed, or a "
             "section \"[x1:x2,y1:y2]\"");
     }
     return text;
@@ -282,7 +284,7 @@ RawLayout read_raw(const YamlValue& value) {
     RawLayout raw;
     const YamlValue hdu = map.required("hdu");
     raw.hdu = hdu.text(68);
-    without_placeholders(hdu, raw.hdu, {"{detector}", "{amplifier}", "{number}"});
+    without_placeholders(hdu, raw.hdu);
     raw.data = section("data");
     raw.bias = section("bias");
     raw.prescan = section("prescan");

@@ -1,0 +1,229 @@
+#include "exposure/moffat_fit.h"
+
+#include <Eigen/Cholesky>
+#include <Eigen/Core>
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+namespace straymark {
+namespace {
+
+using Eigen::Matrix4d;
+using Eigen::Vector4d;
+
+constexpr double kHuber = 3.0;
+/// Pixels are trusted to this part of the profile's own value: no star is exactly the profile.
+constexpr double kProfileError = 0.02;
+constexpr double kStartBeta = 3.0;
+constexpr double kLeastBeta = 1.1;
+/// From here on a Moffat profile is a Gaussian to within a per cent.
+constexpr double kMostBeta = 30.0;
+constexpr int kMostSteps = 12;
+constexpr double kConvergedCost = 1e-4;
+constexpr double kMostDamping = 1e6;
+
+struct Parameters {
+    MoffatShape shape;
+    std::vector<StarFit> stars;
+};
+
+/// One finite pixel of a stamp.
+struct Sample {
+    double i = 0.0;
+    double j = 0.0;
+    double value = 0.0;
+};
+
+/// The normal equations in blocks: s for a star's own parameters, t for the common ones.
+struct StarBlock {
+    Matrix4d h_ss = Matrix4d::Zero();
+    Matrix4d h_st = Matrix4d::Zero();
+    Vector4d g_s = Vector4d::Zero();
+};
+struct NormalEquations {
+    double cost = 0.0;
+    Matrix4d h_tt = Matrix4d::Zero();
+    Vector4d g_t = Vector4d::Zero();
+    std::vector<StarBlock> stars;
+};
+
+std::vector<Sample> samples_of(const StarStamp& stamp, double radius_px) {
+    std::vector<Sample> samples;
+    const int reach = std::min(stamp.radius, static_cast<int>(radius_px + 1.0));
+    for (int j = -reach; j <= reach; ++j) {
+        for (int i = -reach; i <= reach; ++i) {
+            const float value = stamp.at(i, j);
+            if (std::hypot(i - stamp.dx, j - stamp.dy) <= radius_px && std::isfinite(value)) {
+                samples.push_back({double(i), double(j), double(value)});
+            }
+        }
+    }
+    return samples;
+}
+
+double variance_of(const PixelNoise& noise, double signal) {
+    const double positive = std::max(signal, 0.0);
+    return noise.noise_adu * noise.noise_adu + positive / noise.gain_e_per_adu +
+           kProfileError * kProfileError * positive * positive;
+}
+
+class Problem {
+public:
+    Problem(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px)
+        : stamps_(stamps), quadrature_(PixelQuadrature::for_fwhm(start_fwhm_px)) {
+        for (const StarStamp& stamp : stamps) {
+            samples_.push_back(samples_of(stamp, radius_px));
+        }
+    }
+
+    /// Equations at `at`; the pixels' errors are those that `model` predicts, so that costs
+    /// compare.
+    [[nodiscard]] NormalEquations build(const Parameters& at, const Parameters& model) const {
+        NormalEquations equations;
+        equations.stars.resize(stamps_.size());
+        for (std::size_t s = 0; s < stamps_.size(); ++s) {
+            add_star(s, at, model, equations);
+        }
+        return equations;
+    }
+
+    [[nodiscard]] double misfit(std::size_t s, const Parameters& at) const {
+        double sum = 0.0;
+        const StarFit& star = at.stars[s];
+        for (const Sample& sample : samples_[s]) {
+            const double profile =
+                star.amplitude_adu *
+                quadrature_.value(at.shape, sample.i - star.dx, sample.j - star.dy);
+            const double residual = sample.value - star.background_adu - profile;
+            sum += std::min(9.0, residual * residual / variance_of(stamps_[s].noise, profile));
+        }
+        return sum / std::max<double>(1.0, double(samples_[s].size()));
+    }
+
+private:
+    void add_star(std::size_t s, const Parameters& at, const Parameters& model,
+                  NormalEquations& equations) const {
+        const StarFit& star = at.stars[s];
+        const StarFit& reference = model.stars[s];
+        StarBlock& block = equations.stars[s];
+        for (const Sample& sample : samples_[s]) {
+            const MoffatPixel pixel =
+                quadrature_.derivatives(at.shape, sample.i - star.dx, sample.j - star.dy);
+            const double expected =
+                &at == &model ? star.amplitude_adu * pixel.value
+                              : reference.amplitude_adu *
+                                    quadrature_.value(model.shape, sample.i - reference.dx,
+                                                      sample.j - reference.dy);
+            const double error = std::sqrt(variance_of(stamps_[s].noise, expected));
+            const double residual =
+                (sample.value - star.background_adu - star.amplitude_adu * pixel.value) / error;
+            const double size = std::abs(residual);
+            const double huber = size > kHuber ? kHuber / size : 1.0;
+            equations.cost += size > kHuber ? kHuber * (2.0 * size - kHuber) : size * size;
+
+            const Vector4d d_star = Vector4d(pixel.value, -star.amplitude_adu * pixel.d_dx,
+                                             -star.amplitude_adu * pixel.d_dy, 1.0) /
+                                    error;
+            const Vector4d d_shape =
+                Eigen::Map<const Vector4d>(pixel.d_shape.data()) * (star.amplitude_adu / error);
+            block.h_ss.noalias() += huber * d_star * d_star.transpose();
+            block.h_st.noalias() += huber * d_star * d_shape.transpose();
+            block.g_s += huber * residual * d_star;
+            equations.h_tt.noalias() += huber * d_shape * d_shape.transpose();
+            equations.g_t += huber * residual * d_shape;
+        }
+    }
+
+    std::span<const StarStamp> stamps_;
+    PixelQuadrature quadrature_;
+    std::vector<std::vector<Sample>> samples_;
+};
+
+Matrix4d damped(const Matrix4d& matrix, double damping) {
+    Matrix4d result = matrix;
+    result.diagonal() *= 1.0 + damping;
+    result.diagonal().array() += std::numeric_limits<double>::min();
+    return result;
+}
+
+/// One damped step from `at`; the result may be invalid.
+Parameters step_from(const Parameters& at, const NormalEquations& equations, double damping) {
+    Matrix4d reduced = damped(equations.h_tt, damping);
+    Vector4d right = equations.g_t;
+    for (const StarBlock& star : equations.stars) {
+        const Eigen::LDLT<Matrix4d> own(damped(star.h_ss, damping));
+        reduced.noalias() -= star.h_st.transpose() * own.solve(star.h_st);
+        right.noalias() -= star.h_st.transpose() * own.solve(star.g_s);
+    }
+    const Vector4d d_shape = Eigen::LDLT<Matrix4d>(reduced).solve(right);
+    Parameters next = at;
+    next.shape.a += d_shape[0];
+    next.shape.b += d_shape[1];
+    next.shape.c += d_shape[2];
+    next.shape.beta = std::clamp(at.shape.beta + d_shape[3], kLeastBeta, kMostBeta);
+    for (std::size_t s = 0; s < at.stars.size(); ++s) {
+        const StarBlock& star = equations.stars[s];
+        const Vector4d own =
+            Eigen::LDLT<Matrix4d>(damped(star.h_ss, damping)).solve(star.g_s - star.h_st * d_shape);
+        next.stars[s].amplitude_adu += own[0];
+        next.stars[s].dx += own[1];
+        next.stars[s].dy += own[2];
+        next.stars[s].background_adu += own[3];
+    }
+    return next;
+}
+
+bool finite(const Parameters& parameters) {
+    return parameters.shape.valid() &&
+           std::all_of(parameters.stars.begin(), parameters.stars.end(), [](const StarFit& star) {
+               return std::isfinite(star.amplitude_adu + star.dx + star.dy + star.background_adu);
+           });
+}
+
+/// Levenberg-Marquardt with the pixels' errors held at those of the first parameters.
+bool descend(const Problem& problem, Parameters& parameters) {
+    const Parameters model = parameters;
+    NormalEquations equations = problem.build(parameters, model);
+    double damping = 1e-3;
+    for (int k = 0; k < kMostSteps && damping < kMostDamping; ++k) {
+        Parameters next = step_from(parameters, equations, damping);
+        if (!finite(next)) {
+            damping *= 10.0;
+            continue;
+        }
+        NormalEquations there = problem.build(next, model);
+        if (!(there.cost <= equations.cost)) {
+            damping *= 10.0;
+            continue;
+        }
+        const bool done = equations.cost - there.cost <= kConvergedCost * equations.cost;
+        parameters = std::move(next);
+        equations = std::move(there);
+        damping *= 0.1;
+        if (done) {
+            return true;
+        }
+    }
+    return false;
+}
+
+}  // namespace
+
+MoffatFit fit_moffat(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px) {
+    const Problem problem(stamps, start_fwhm_px, radius_px);
+    Parameters parameters{MoffatShape::circular(start_fwhm_px, kStartBeta), {}};
+    const double volume = parameters.shape.volume();
+    for (const StarStamp& stamp : stamps) {
+        parameters.stars.push_back({stamp.flux_adu / volume, stamp.dx, stamp.dy, 0.0, 0.0});
+    }
+    // The second descent has the errors that the first one's profile predicts.
+    descend(problem, parameters);
+    const bool converged = descend(problem, parameters);
+    for (std::size_t s = 0; s < stamps.size(); ++s) {
+        parameters.stars[s].misfit = problem.misfit(s, parameters);
+    }
+    return {converged, parameters.shape, std::move(parameters.stars)};
+}
+
+}  // namespace straymark

@@ -1,0 +1,340 @@
+#include "score/figure.h"
+
+#include <algorithm>
+#include <array>
+#include <cmath>
+#include <cstddef>
+#include <cstdint>
+#include <fmt/format.h>
+#include <string_view>
+
+#include "core/frames.h"
+#include "score/pixels.h"
+
+namespace straymark::score {
+namespace {
+
+constexpr Colour kPage{255, 255, 255};
+constexpr Colour kInk{30, 30, 34};
+constexpr Colour kFaintInk{110, 110, 118};
+constexpr Colour kDark{18, 20, 26};
+
+constexpr int kMargin = 24;
+constexpr int kGap = 16;
+constexpr int kOverviewSide = 624;
+constexpr int kCloseUps = 8;
+constexpr int kCloseUpPx = 37;  // odd: the echo's peak is in the middle
+constexpr int kZoom = 4;
+constexpr int kCloseUpSide = kCloseUpPx * kZoom;
+constexpr int kWidth = 2 * kMargin + 2 * kOverviewSide + kGap;
+constexpr int kOverviewTop = 92;
+constexpr int kCloseUpTop = kOverviewTop + kOverviewSide + 44;
+constexpr int kLegendTop = kCloseUpTop + 2 * kCloseUpSide + 10 + 24;
+constexpr int kHeight = kLegendTop + 50;
+
+/// What a pixel's flag was worth.
+enum class PixelClass : std::uint8_t { clear, found, missed, outside, between, unknown, count };
+
+constexpr std::array<Colour, static_cast<std::size_t>(PixelClass::count)> kClassColours = {{
+    kDark,            // clear
+    {86, 180, 233},   // found: sky blue
+    {213, 94, 0},     // missed: vermilion
+    {240, 228, 66},   // outside: yellow
+    {120, 122, 128},  // between: grey
+    {150, 84, 122},   // unknown: reddish purple, darkened
+}};
+constexpr std::array<std::string_view, static_cast<std::size_t>(PixelClass::count)> kClassTexts = {
+    "clear",
+    "flagged, true",
+    "missed (1.5 or more)",
+    "flagged, not true",
+    "1 to 1.5, not flagged",
+    "marginal or unassessed"};
+
+PixelClass class_of(const FigureDetector& detector, std::size_t index) {
+    const auto response = static_cast<double>(detector.response[index]);
+    const double strength = std::abs(response);
+    const BitValues& values = detector.found.values;
+    const std::int32_t bits = detector.found.present ? detector.found.bits[index] : 0;
+    const bool any_flag = (bits & (values.positive | values.negative)) != 0;
+    if (flagged_as(detector.found, index, response) && strength >= kTrueResponse) {
+        return PixelClass::found;
+    }
+    if (strength >= kRequiredResponse) {
+        return PixelClass::missed;
+    }
+    if (any_flag) {
+        return PixelClass::outside;
+    }
+    if (strength >= kTrueResponse) {
+        return PixelClass::between;
+    }
+    return (bits & (values.marginal | values.unassessed)) != 0 ? PixelClass::unknown
+                                                               : PixelClass::clear;
+}
+
+Colour mixed(Colour a, Colour b, double share_of_b) {
+    const auto mix = [share_of_b](std::uint8_t x, std::uint8_t y) {
+        return static_cast<std::uint8_t>(std::lround((1.0 - share_of_b) * x + share_of_b * y));
+    };
+    return {mix(a.red, b.red), mix(a.green, b.green), mix(a.blue, b.blue)};
+}
+
+/// Positive through blue to white, negative through orange to white; a response of 20 is the end.
+Colour response_colour(double response) {
+    constexpr double kSoft = 0.5;
+    constexpr double kEnd = 20.0;
+    const double level =
+        std::min(1.0, std::asinh(std::abs(response) / kSoft) / std::asinh(kEnd / kSoft));
+    const Colour hue = response < 0.0 ? Colour{230, 159, 0} : Colour{86, 180, 233};
+    constexpr double kFullHue = 0.7;
+    return level < kFullHue ? mixed(kDark, hue, level / kFullHue)
+                            : mixed(hue, kPage, (level - kFullHue) / (1.0 - kFullHue));
+}
+
+/// Mean colour of the pixels that are not clear, kept visible however few they are.
+Colour class_colour_of_block(const FigureDetector& detector, const PixelBox& block) {
+    constexpr double kLeastShare = 0.6;
+    std::array<double, 3> sum{};
+    int drawn = 0;
+    for (int y = block.y0; y < block.y1; ++y) {
+        for (int x = block.x0; x < block.x1; ++x) {
+            const PixelClass kind = class_of(detector, std::size_t(y) * detector.truth.width + x);
+            if (kind != PixelClass::clear) {
+                const Colour colour = kClassColours[static_cast<std::size_t>(kind)];
+                sum[0] += colour.red;
+                sum[1] += colour.green;
+                sum[2] += colour.blue;
+                ++drawn;
+            }
+        }
+    }
+    if (drawn == 0) {
+        return kDark;
+    }
+    const auto mean = [drawn](double total) { return static_cast<std::uint8_t>(total / drawn); };
+    const double share = static_cast<double>(drawn) / (block.width() * block.height());
+    return mixed(kDark, {mean(sum[0]), mean(sum[1]), mean(sum[2])}, std::max(kLeastShare, share));
+}
+
+Colour response_colour_of_block(const FigureDetector& detector, const PixelBox& block) {
+    double largest = 0.0;
+    for (int y = block.y0; y < block.y1; ++y) {
+        for (int x = block.x0; x < block.x1; ++x) {
+            const auto here =
+                static_cast<double>(detector.response[std::size_t(y) * detector.truth.width + x]);
+            largest = std::abs(here) > std::abs(largest) ? here : largest;
+        }
+    }
+    return response_colour(largest);
+}
+
+/// Draws a detector into `panel`, first row at the bottom.
+template <typename BlockColour>
+void draw_detector(Canvas& canvas, const PixelBox& panel, const FigureDetector& detector,
+                   BlockColour block_colour) {
+    const int shrink = std::max({1, (detector.truth.width + panel.width() - 1) / panel.width(),
+                                 (detector.truth.height + panel.height() - 1) / panel.height()});
+    for (int j = 0; j * shrink < detector.truth.height; ++j) {
+        for (int i = 0; i * shrink < detector.truth.width; ++i) {
+            const PixelBox block =
+                PixelBox{i * shrink, j * shrink, (i + 1) * shrink, (j + 1) * shrink}.intersected(
+                    {0, 0, detector.truth.width, detector.truth.height});
+            canvas.set(panel.x0 + i, panel.y1 - 1 - j, block_colour(detector, block));
+        }
+    }
+    canvas.text(panel.x0 + 4, panel.y0 + 4, detector.truth.id, kPage);
+}
+
+template <typename BlockColour>
+void draw_overview(Canvas& canvas, int left, std::span<const FigureDetector> detectors,
+                   BlockColour block_colour) {
+    const int columns = static_cast<int>(
+        std::ceil(std::sqrt(static_cast<double>(std::max<std::size_t>(1, detectors.size())))));
+    const int cell = kOverviewSide / columns;
+    for (std::size_t i = 0; i < detectors.size(); ++i) {
+        const int x = left + static_cast<int>(i) % columns * cell;
+        const int y = kOverviewTop + static_cast<int>(i) / columns * cell;
+        const PixelBox panel{x, y, x + cell - 2, y + cell - 2};
+        canvas.fill(panel, kDark);
+        draw_detector(canvas, panel, detectors[i], block_colour);
+    }
+}
+
+struct CloseUp {
+    const FigureDetector* detector = nullptr;
+    const TrueEcho* echo = nullptr;
+    DetectorPixel centre;
+    double response = 0.0;
+    std::int64_t wrong = 0;  ///< missed and falsely flagged pixels about it
+    std::string_view reason;
+};
+
+PixelBox window_of(const CloseUp& view) {
+    return PixelBox{view.centre.x, view.centre.y, view.centre.x + 1, view.centre.y + 1}.grown(
+        kCloseUpPx / 2);
+}
+
+std::int64_t wrong_pixels(const CloseUp& view) {
+    const TrueDetector& truth = view.detector->truth;
+    const PixelBox box = window_of(view).intersected({0, 0, truth.width, truth.height});
+    std::int64_t wrong = 0;
+    for (int y = box.y0; y < box.y1; ++y) {
+        for (int x = box.x0; x < box.x1; ++x) {
+            const PixelClass kind = class_of(*view.detector, std::size_t(y) * truth.width + x);
+            wrong += kind == PixelClass::missed || kind == PixelClass::outside ? 1 : 0;
+        }
+    }
+    return wrong;
+}
+
+/// All echoes that had to be found, strongest first.
+std::vector<CloseUp> candidates(std::span<const FigureDetector> detectors) {
+    std::vector<CloseUp> views;
+    for (const FigureDetector& detector : detectors) {
+        for (const TrueEcho& echo : detector.truth.echoes) {
+            const DetectorPixel centre{static_cast<int>(std::lround(echo.x_px)),
+                                       static_cast<int>(std::lround(echo.y_px))};
+            if (amplifier_at(detector.truth, centre.x, centre.y) == nullptr) {
+                continue;
+            }
+            const auto response = static_cast<double>(
+                detector.response[std::size_t(centre.y) * detector.truth.width + centre.x]);
+            if (std::abs(response) >= kRequiredResponse) {
+                views.push_back({&detector, &echo, centre, response, 0, ""});
+            }
+        }
+    }
+    std::stable_sort(views.begin(), views.end(), [](const CloseUp& a, const CloseUp& b) {
+        return std::abs(a.response) > std::abs(b.response);
+    });
+    return views;
+}
+
+std::vector<CloseUp> chosen(std::vector<CloseUp> views) {
+    std::vector<CloseUp> picked;
+    const auto take = [&picked](const CloseUp& view, std::string_view reason) {
+        const bool apart =
+            std::none_of(picked.begin(), picked.end(), [&view](const CloseUp& other) {
+                return other.detector == view.detector &&
+                       window_of(other).contains(view.centre.x, view.centre.y);
+            });
+        if (apart && picked.size() < kCloseUps) {
+            picked.push_back(view);
+            picked.back().reason = reason;
+        }
+        return apart;
+    };
+    const auto take_first = [&](int wanted, std::string_view reason, auto begin, auto end) {
+        for (auto view = begin; view != end && wanted > 0; ++view) {
+            wanted -= take(*view, reason) ? 1 : 0;
+        }
+    };
+    take_first(2, "strong", views.begin(), views.end());
+    take_first(2, "middling", views.begin() + static_cast<std::ptrdiff_t>(views.size() / 2),
+               views.end());
+    take_first(2, "weak", views.rbegin(), views.rend());
+    // Counting is the cost: of many echoes a regular sample is looked at.
+    constexpr std::size_t kMostCounted = 2000;
+    const std::size_t stride = views.size() / kMostCounted + 1;
+    std::vector<CloseUp> counted;
+    for (std::size_t i = 0; i < views.size(); i += stride) {
+        counted.push_back(views[i]);
+        counted.back().wrong = wrong_pixels(views[i]);
+    }
+    std::stable_sort(counted.begin(), counted.end(),
+                     [](const CloseUp& a, const CloseUp& b) { return a.wrong > b.wrong; });
+    take_first(2, "worst", counted.begin(), counted.end());
+    return picked;
+}
+
+template <typename PixelColour>
+void draw_close_up(Canvas& canvas, int left, int top, const CloseUp& view,
+                   PixelColour pixel_colour) {
+    const TrueDetector& truth = view.detector->truth;
+    const PixelBox window = window_of(view);
+    canvas.fill({left, top, left + kCloseUpSide, top + kCloseUpSide}, kFaintInk);
+    for (int y = window.y0; y < window.y1; ++y) {
+        for (int x = window.x0; x < window.x1; ++x) {
+            if (PixelBox{0, 0, truth.width, truth.height}.contains(x, y)) {
+                const int px = left + (x - window.x0) * kZoom;
+                const int py = top + (window.y1 - 1 - y) * kZoom;
+                canvas.fill({px, py, px + kZoom, py + kZoom},
+                            pixel_colour(*view.detector, std::size_t(y) * truth.width + x));
+            }
+        }
+    }
+}
+
+void draw_close_ups(Canvas& canvas, std::span<const FigureDetector> detectors) {
+    const std::vector<CloseUp> views = chosen(candidates(detectors));
+    constexpr int kStep = (kWidth - 2 * kMargin) / kCloseUps;
+    for (std::size_t i = 0; i < views.size(); ++i) {
+        const CloseUp& view = views[i];
+        const int left = kMargin + static_cast<int>(i) * kStep;
+        canvas.text(left, kCloseUpTop - 24, fmt::format("{}, {:+.1f}", view.reason, view.response),
+                    kInk);
+        canvas.text(left, kCloseUpTop - 12,
+                    fmt::format("{} > {}", view.echo->source, view.echo->victim), kFaintInk);
+        draw_close_up(canvas, left, kCloseUpTop, view,
+                      [](const FigureDetector& detector, std::size_t index) {
+                          return response_colour(static_cast<double>(detector.response[index]));
+                      });
+        draw_close_up(canvas, left, kCloseUpTop + kCloseUpSide + 6, view,
+                      [](const FigureDetector& detector, std::size_t index) {
+                          return kClassColours[static_cast<std::size_t>(class_of(detector, index))];
+                      });
+    }
+}
+
+void draw_headline(Canvas& canvas, const NightScore& night, const std::string& exposure) {
+    canvas.text(kMargin, 16, fmt::format("{}: exposure {}", night.kind, exposure), kInk, 2);
+    std::string line = fmt::format("night of {} exposures: ", night.exposures.size());
+    constexpr std::array<std::string_view, 4> kShort = {"pixels", "echoes", "area", "slope"};
+    for (std::size_t i = 0; i < kShort.size(); ++i) {
+        line += fmt::format("{} {} ({})   ", kShort[i], night.figures[i].shown,
+                            night.figures[i].met ? "met" : "not met");
+    }
+    canvas.text(kMargin, 40, line, kInk);
+    canvas.text(kMargin, kOverviewTop - 22, "true response", kInk, 2);
+    canvas.text(kMargin + kOverviewSide + kGap, kOverviewTop - 22, "the mask against it", kInk, 2);
+}
+
+void draw_legend(Canvas& canvas) {
+    constexpr int kSwatch = 12;
+    constexpr int kRow = 20;
+    canvas.text(kMargin, kLegendTop + 3, "response -20", kInk);
+    constexpr int kBarLeft = kMargin + 84;
+    constexpr int kBarHalf = 150;
+    for (int i = -kBarHalf; i <= kBarHalf; ++i) {
+        // The bar is even in the colour's own scale.
+        const double level = static_cast<double>(std::abs(i)) / kBarHalf;
+        const double strength = 0.5 * std::sinh(level * std::asinh(40.0));
+        canvas.fill({kBarLeft + kBarHalf + i, kLegendTop, kBarLeft + kBarHalf + i + 1,
+                     kLegendTop + kSwatch},
+                    response_colour(i < 0 ? -strength : strength));
+    }
+    canvas.text(kBarLeft + 2 * kBarHalf + 8, kLegendTop + 3, "+20", kInk);
+    int x = kMargin;
+    for (std::size_t i = 1; i < kClassColours.size(); ++i) {
+        canvas.fill({x, kLegendTop + kRow, x + kSwatch, kLegendTop + kRow + kSwatch},
+                    kClassColours[i]);
+        canvas.text(x + kSwatch + 6, kLegendTop + kRow + 3, kClassTexts[i], kInk);
+        x += kSwatch + 6 + Canvas::text_width(kClassTexts[i].size()) + 24;
+    }
+}
+
+}  // namespace
+
+Canvas figure_of(const NightScore& night, const std::string& exposure,
+                 std::span<const FigureDetector> detectors) {
+    Canvas canvas(kWidth, kHeight, kPage);
+    draw_headline(canvas, night, exposure);
+    draw_overview(canvas, kMargin, detectors, response_colour_of_block);
+    draw_overview(canvas, kMargin + kOverviewSide + kGap, detectors, class_colour_of_block);
+    draw_close_ups(canvas, detectors);
+    draw_legend(canvas);
+    return canvas;
+}
+
+}  // namespace straymark::score
