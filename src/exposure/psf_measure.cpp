@@ -140,6 +140,23 @@ Stacked stack_pixel(const std::vector<Excess>& excesses, std::vector<float>& scr
     return weights > 0.0 ? Stacked{sum / weights, 1.0 / std::sqrt(weights)} : Stacked{};
 }
 
+/// How much of a table of values with unit errors is more than noise: the positive-part estimator
+/// of James & Stein 1961 (4th Berkeley Symp. 1, 361).
+class Significance {
+public:
+    void add(double value_in_errors) {
+        sum_ += value_in_errors * value_in_errors;
+        ++count_;
+    }
+    [[nodiscard]] double shrinkage() const {
+        return sum_ > 0.0 ? std::max(0.0, 1.0 - count_ / sum_) : 0.0;
+    }
+
+private:
+    double sum_ = 0.0;
+    int count_ = 0;
+};
+
 /// A profile and a table of what stars show beyond it.
 class Image {
 public:
@@ -178,6 +195,7 @@ private:
         }
         std::vector<Excess> excesses;
         std::vector<float> scratch;
+        Significance significance;
         for (int j = -radius_; j <= radius_; ++j) {
             for (int i = -radius_; i <= radius_; ++i) {
                 const double expected = profile(i, j);
@@ -192,8 +210,15 @@ private:
                 }
                 const Stacked stacked = stack_pixel(excesses, scratch);
                 const double ratio = stacked.error / expected;
+                if (ratio < 1.0) {
+                    significance.add(stacked.value / stacked.error);
+                }
                 table_.push_back(stacked.value / (1.0 + ratio * ratio));
             }
+        }
+        const double shrinkage = significance.shrinkage();
+        for (double& value : table_) {
+            value *= shrinkage;
         }
     }
 
