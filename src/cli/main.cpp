@@ -4,6 +4,7 @@
 
 #include "cli/command.h"
 #include "core/error.h"
+#include "io/fits_isolated.h"
 
 namespace {
 
@@ -19,6 +20,11 @@ int run(int argc, char** argv) {
     line.app.require_subcommand(1);
     line.app.set_version_flag("--version", "straymark " STRAYMARK_VERSION);
     add_simulate(line);
+    add_check(line);
+    add_stars(line);
+    add_build(line);
+    add_simulate(line);
+    add_score(line);
     try {
         line.app.parse(argc, argv);
     } catch (const CLI::ParseError& error) {

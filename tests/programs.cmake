@@ -1,0 +1,14 @@
+# Tests that are programs of their own: structure, the real binary from end to end, other languages.
+# Debian's Python is named, for astropy and numpy are installed for it alone.
+set(PYTHON /usr/bin/python3)
+
+function(straymark_script_test name timeout)
+  add_test(NAME "${name}" COMMAND ${ARGN} WORKING_DIRECTORY ${PROJECT_SOURCE_DIR})
+  set_tests_properties("${name}" PROPERTIES TIMEOUT ${timeout})
+endfunction()
+
+straymark_script_test("structure: includes" 60
+  ${PYTHON} tests/structure/include_rule.py ${PROJECT_SOURCE_DIR})
+straymark_script_test("structure: the include rule sees what is planted" 60
+  ${PYTHON} tests/structure/include_rule_test.py)
+straymark_script_test("structure: format" 120 tests/format.sh --check)
