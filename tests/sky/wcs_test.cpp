@@ -150,7 +150,7 @@ TEST_CASE("A real mosaic header is read; TNX and ZPX are refused by name") {
 
 TEST_CASE("An unclosed quote in any WCS card is an error, not a dead process") {
     const Cards hostile = cards_of_file("fault/hostile/wcspih_unclosed_quote.hdr");
-    CHECK_THAT(message_of(hostile), Catch::Contains("quote") || Catch::Contains("no error"));
+    CHECK_THAT(message_of(hostile), Catch::Contains("a quote that is not closed"));
     for (const char* keyword : {"CTYPE1", "CTYPE2", "CUNIT1", "RADESYS", "RADECSYS"}) {
         std::string text = keyword;
         text.resize(8, ' ');
@@ -172,7 +172,7 @@ TEST_CASE("Headers that would be misread are refused with the reason") {
     refused("CRVAL1  = 'x'", "a finite number");
     refused("CRVAL1  = NaN", "a finite number");
     refused("CRVAL1  = 1E400", "a finite number");
-    refused("CD1_1   = 0.0", "CD1_1");
+    refused("CD1_1   = 0.0", "singular");
     refused("RADESYS = 'FK4'", "ICRS");
     refused("EQUINOX = 1950.0", "2000");
     refused("WCSAXES = 3", "WCSAXES");

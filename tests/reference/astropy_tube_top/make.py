@@ -3,7 +3,7 @@
 
 The zenith is approached through AltAz at zero pressure, the pole of date through TETE (true equator
 and equinox): the position angle, in ICRS at the boresight, of a point 0.05 degree up that circle.
-UT1 - UTC is set to zero; polar motion (0.3 arcsec at most) is astropy's default.
+UT1 - UTC and polar motion are set to zero.
 
     python3 make.py > tube_top.csv
 """
@@ -11,10 +11,12 @@ UT1 - UTC is set to zero; polar motion (0.3 arcsec at most) is astropy's default
 import warnings
 
 from astropy import units as u
+from astropy.coordinates import erfa_astrom
 from astropy.coordinates import ICRS, TETE, AltAz, EarthLocation, SkyCoord
 from astropy.time import Time
 from astropy.utils import iers
 
+erfa_astrom.get_polar_motion = lambda time: (0.0, 0.0)
 iers.conf.auto_download = False
 iers.conf.iers_degraded_accuracy = "ignore"
 warnings.simplefilter("ignore")

@@ -28,7 +28,7 @@ def vector(ra, dec):
 
 
 def undistorted(r, k1, k2):
-    low, high = 0.0, 1.0
+    low, high = 0.0, 0.03  # beyond any field here, before the polynomial turns back
     for _ in range(200):
         t = 0.5 * (low + high)
         if t * (1 + k1 * t**2 + k2 * t**4) < r:
