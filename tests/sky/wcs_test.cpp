@@ -150,7 +150,10 @@ TEST_CASE("A real mosaic header is read; TNX and ZPX are refused by name") {
 
 TEST_CASE("An unclosed quote in any WCS card is an error, not a dead process") {
     const Cards hostile = cards_of_file("fault/hostile/wcspih_unclosed_quote.hdr");
-    CHECK_THAT(message_of(hostile), Catch::Contains("a quote that is not closed"));
+    CHECK(message_of(hostile) != "no error");
+    // Its CRPIX1 is damaged too; that put right, the quote is what remains.
+    CHECK_THAT(message_of(with_card(hostile, "CRPIX1  = -3925.16")),
+               Catch::Contains("a quote that is not closed"));
     for (const char* keyword : {"CTYPE1", "CTYPE2", "CUNIT1", "RADESYS", "RADECSYS"}) {
         std::string text = keyword;
         text.resize(8, ' ');

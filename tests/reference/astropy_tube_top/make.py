@@ -36,15 +36,16 @@ def main():
             time = Time(mjd, format="mjd", scale="utc", location=place)
             time.delta_ut1_utc = 0.0
             frame = AltAz(obstime=time, location=place, pressure=0 * u.hPa)
+            of_date = TETE(obstime=time, location=place)
             for ra, dec in FIELDS:
                 field = SkyCoord(ra * u.deg, dec * u.deg)
                 seen = field.transform_to(frame)
                 if seen.alt < 5 * u.deg:
                     continue
                 up = SkyCoord(az=seen.az, alt=seen.alt + step, frame=frame).transform_to(ICRS())
-                true = field.transform_to(TETE(obstime=time))
-                north = SkyCoord(ra=true.ra, dec=true.dec + step,
-                                 frame=TETE(obstime=time)).transform_to(ICRS())
+                true = field.transform_to(of_date)
+                north = SkyCoord(ra=true.ra, dec=true.dec + step, frame=of_date)
+                north = north.transform_to(ICRS())
                 print(f"{latitude},{longitude},{height},{ra},{dec},{mjd},"
                       f"{field.position_angle(up).deg:.6f},{field.position_angle(north).deg:.6f},"
                       f"{seen.alt.deg:.6f},{seen.az.deg:.6f}")
