@@ -156,4 +156,10 @@ Horizontal horizontal_from_sky(const Observatory& observatory, SkyPoint point, M
             eraAnpm(observed.hour_angle_rad) * ERFA_DR2D};
 }
 
+double airmass(double altitude_deg) {
+    assert(altitude_deg >= 0.0);
+    return 1.0 /
+           (std::sin(radians(altitude_deg)) + 0.50572 * std::pow(altitude_deg + 6.07995, -1.6364));
+}
+
 }  // namespace straymark

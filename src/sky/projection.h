@@ -33,4 +33,8 @@ struct Horizontal {
 };
 Horizontal horizontal_from_sky(const Observatory& observatory, SkyPoint point, MjdUtc mjd);
 
+/// Relative thickness of the air along a line of sight at this altitude, degrees, 0 or more.
+/// Source: Kasten & Young 1989, Applied Optics 28, 4735.
+double airmass(double altitude_deg);
+
 }  // namespace straymark
