@@ -6,11 +6,16 @@
 #include <cmath>
 #include <limits>
 
+#include "core/robust.h"
+
 namespace straymark {
 namespace {
 
+using Eigen::Matrix3d;
 using Eigen::Matrix4d;
+using Eigen::Vector3d;
 using Eigen::Vector4d;
+using Matrix34d = Eigen::Matrix<double, 3, 4>;
 
 constexpr double kHuber = 3.0;
 /// Pixels are trusted to this part of the profile's own value: no star is exactly the profile.
@@ -38,9 +43,9 @@ struct Sample {
 
 /// The normal equations in blocks: s for a star's own parameters, t for the common ones.
 struct StarBlock {
-    Matrix4d h_ss = Matrix4d::Zero();
-    Matrix4d h_st = Matrix4d::Zero();
-    Vector4d g_s = Vector4d::Zero();
+    Matrix3d h_ss = Matrix3d::Zero();
+    Matrix34d h_st = Matrix34d::Zero();
+    Vector3d g_s = Vector3d::Zero();
 };
 struct NormalEquations {
     double cost = 0.0;
@@ -49,16 +54,22 @@ struct NormalEquations {
     std::vector<StarBlock> stars;
 };
 
-std::vector<Sample> samples_of(const StarStamp& stamp, double radius_px) {
-    std::vector<Sample> samples;
-    const int reach = std::min(stamp.radius, static_cast<int>(radius_px + 1.0));
+/// The finite pixels of a stamp within a radius of the star, and those beyond.
+struct StampSamples {
+    std::vector<Sample> within, beyond;
+};
+
+StampSamples samples_of(const StarStamp& stamp, double radius_px) {
+    StampSamples samples;
+    const int reach = stamp.radius;
     for (int j = -reach; j <= reach; ++j) {
         for (int i = -reach; i <= reach; ++i) {
             const float value = stamp.at(i, j);
             const double squared =
                 (i - stamp.dx) * (i - stamp.dx) + (j - stamp.dy) * (j - stamp.dy);
-            if (squared <= radius_px * radius_px && std::isfinite(value)) {
-                samples.push_back({double(i), double(j), double(value), 1.0});
+            if (std::isfinite(value)) {
+                auto& part = squared <= radius_px * radius_px ? samples.within : samples.beyond;
+                part.push_back({double(i), double(j), double(value), 1.0});
             }
         }
     }
@@ -83,10 +94,23 @@ public:
     /// Sets the pixels' errors to those that these parameters predict.
     void set_errors(const Parameters& at) {
         for (std::size_t s = 0; s < stamps_.size(); ++s) {
-            for (Sample& sample : samples_[s]) {
+            for (Sample& sample : samples_[s].within) {
                 sample.error =
                     std::sqrt(variance_of(stamps_[s].noise, profile(at, at.stars[s], sample)));
             }
+        }
+    }
+
+    /// Sets the stars' backgrounds to what lies beyond them under these parameters.
+    void set_backgrounds(Parameters& at) const {
+        std::vector<double> beyond;
+        for (std::size_t s = 0; s < stamps_.size(); ++s) {
+            beyond.clear();
+            for (const Sample& sample : samples_[s].beyond) {
+                beyond.push_back(sample.value - profile(at, at.stars[s], sample));
+            }
+            at.stars[s].background_adu =
+                beyond.empty() ? 0.0 : median_in_place(std::span<double>(beyond));
         }
     }
 
@@ -102,12 +126,12 @@ public:
     [[nodiscard]] double misfit(std::size_t s, const Parameters& at) const {
         double sum = 0.0;
         const StarFit& star = at.stars[s];
-        for (const Sample& sample : samples_[s]) {
+        for (const Sample& sample : samples_[s].within) {
             const double residual =
                 (sample.value - star.background_adu - profile(at, star, sample)) / sample.error;
             sum += std::min(9.0, residual * residual);
         }
-        return sum / std::max<double>(1.0, double(samples_[s].size()));
+        return sum / std::max<double>(1.0, double(samples_[s].within.size()));
     }
 
 private:
@@ -120,7 +144,7 @@ private:
     void add_star(std::size_t s, const Parameters& at, NormalEquations& equations) const {
         const StarFit& star = at.stars[s];
         StarBlock& block = equations.stars[s];
-        for (const Sample& sample : samples_[s]) {
+        for (const Sample& sample : samples_[s].within) {
             const MoffatPixel pixel =
                 quadrature_.derivatives(at.shape, sample.i - star.dx, sample.j - star.dy);
             const double error = sample.error;
@@ -130,8 +154,8 @@ private:
             const double huber = size > kHuber ? kHuber / size : 1.0;
             equations.cost += size > kHuber ? kHuber * (2.0 * size - kHuber) : size * size;
 
-            const Vector4d d_star = Vector4d(pixel.value, -star.amplitude_adu * pixel.d_dx,
-                                             -star.amplitude_adu * pixel.d_dy, 1.0) /
+            const Vector3d d_star = Vector3d(pixel.value, -star.amplitude_adu * pixel.d_dx,
+                                             -star.amplitude_adu * pixel.d_dy) /
                                     error;
             const Vector4d d_shape =
                 Eigen::Map<const Vector4d>(pixel.d_shape.data()) * (star.amplitude_adu / error);
@@ -145,11 +169,12 @@ private:
 
     std::span<const StarStamp> stamps_;
     PixelQuadrature quadrature_;
-    std::vector<std::vector<Sample>> samples_;
+    std::vector<StampSamples> samples_;
 };
 
-Matrix4d damped(const Matrix4d& matrix, double damping) {
-    Matrix4d result = matrix;
+template <typename Matrix>
+Matrix damped(const Matrix& matrix, double damping) {
+    Matrix result = matrix;
     result.diagonal() *= 1.0 + damping;
     result.diagonal().array() += std::numeric_limits<double>::min();
     return result;
@@ -160,7 +185,7 @@ Parameters step_from(const Parameters& at, const NormalEquations& equations, dou
     Matrix4d reduced = damped(equations.h_tt, damping);
     Vector4d right = equations.g_t;
     for (const StarBlock& star : equations.stars) {
-        const Eigen::LDLT<Matrix4d> own(damped(star.h_ss, damping));
+        const Eigen::LDLT<Matrix3d> own(damped(star.h_ss, damping));
         reduced.noalias() -= star.h_st.transpose() * own.solve(star.h_st);
         right.noalias() -= star.h_st.transpose() * own.solve(star.g_s);
     }
@@ -172,12 +197,11 @@ Parameters step_from(const Parameters& at, const NormalEquations& equations, dou
     next.shape.beta = std::clamp(at.shape.beta + d_shape[3], kLeastBeta, kMostBeta);
     for (std::size_t s = 0; s < at.stars.size(); ++s) {
         const StarBlock& star = equations.stars[s];
-        const Vector4d own =
-            Eigen::LDLT<Matrix4d>(damped(star.h_ss, damping)).solve(star.g_s - star.h_st * d_shape);
+        const Vector3d own =
+            Eigen::LDLT<Matrix3d>(damped(star.h_ss, damping)).solve(star.g_s - star.h_st * d_shape);
         next.stars[s].amplitude_adu += own[0];
         next.stars[s].dx += own[1];
         next.stars[s].dy += own[2];
-        next.stars[s].background_adu += own[3];
     }
     return next;
 }
@@ -185,14 +209,15 @@ Parameters step_from(const Parameters& at, const NormalEquations& equations, dou
 bool finite(const Parameters& parameters) {
     return parameters.shape.valid() &&
            std::all_of(parameters.stars.begin(), parameters.stars.end(), [](const StarFit& star) {
-               return std::isfinite(star.amplitude_adu + star.dx + star.dy + star.background_adu);
+               return std::isfinite(star.amplitude_adu + star.dx + star.dy);
            });
 }
 
-/// Levenberg-Marquardt with the pixels' errors held at those of the first parameters, so that the
-/// costs compare.
+/// Levenberg-Marquardt with the pixels' errors and the backgrounds held at those of the first
+/// parameters, so that the costs compare.
 bool descend(Problem& problem, Parameters& parameters) {
     problem.set_errors(parameters);
+    problem.set_backgrounds(parameters);
     NormalEquations equations = problem.build(parameters);
     double damping = 1e-3;
     for (int k = 0; k < kMostSteps && damping < kMostDamping; ++k) {
@@ -226,7 +251,7 @@ MoffatFit fit_moffat(std::span<const StarStamp> stamps, double start_fwhm_px, do
     for (const StarStamp& stamp : stamps) {
         parameters.stars.push_back({stamp.flux_adu / volume, stamp.dx, stamp.dy, 0.0, 0.0});
     }
-    // The second descent has the errors that the first one's profile predicts.
+    // The second descent has the errors and backgrounds that the first one's profile predicts.
     descend(problem, parameters);
     const bool converged = descend(problem, parameters);
     for (std::size_t s = 0; s < stamps.size(); ++s) {

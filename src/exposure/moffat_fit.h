@@ -23,10 +23,12 @@ struct MoffatFit {
     std::vector<StarFit> stars;  ///< as the stamps
 };
 
-/// Fits one pixel-averaged Moffat profile to all stamps at once, with amplitude, position and
-/// background of each star free, to the pixels within `radius_px` of each star. Robust: Huber
-/// weights (3 sigma). Levenberg-Marquardt on the common parameters after elimination of the stars'
-/// (Schur complement), so the cost is linear in the pixels. `start`: a circular profile's width.
+/// Fits one pixel-averaged Moffat profile to all stamps at once, with amplitude and position of
+/// each star free, to the pixels within `radius_px` of each star. Its background is the median of
+/// the stamp's pixels beyond, less the profile there: free in the fit it would take up what a
+/// profile lacks in its wings. Robust: Huber weights (3 sigma). Levenberg-Marquardt on the common
+/// parameters after elimination of the stars' (Schur complement), so the cost is linear in the
+/// pixels. start_fwhm_px: of the circular profile to begin with.
 MoffatFit fit_moffat(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px);
 
 }  // namespace straymark

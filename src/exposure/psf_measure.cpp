@@ -24,12 +24,15 @@ constexpr double kMostPixels = 12000.0;
 constexpr std::size_t kLeastFitted = 12;
 /// The profile is fitted within this many FWHM of each star.
 constexpr double kFitFwhms = 3.0;
-/// A star whose misfit is this many times the median is not one, or not alone.
+/// A star whose misfit is this many times that of the so many stars just brighter and fainter is
+/// not one, or not alone.
 constexpr double kMostMisfit = 2.0;
+constexpr std::size_t kMisfitNeighbours = 5;
 /// The table of what stars show beyond the profile is improved this often, at most, and as long as
-/// more than the second part of what is found is not noise.
+/// more than this part of what is found somewhere, over so many pixels to each side, is not noise.
 constexpr int kMostPasses = 4;
 constexpr double kLittle = 0.3;
+constexpr int kNeighbourhood = 2;
 /// Stack pixels farther from their median than this many errors are left out.
 constexpr double kStackClip = 4.0;
 
@@ -64,15 +67,25 @@ double median_fwhm(const std::vector<StarStamp>& stamps) {
     return median_in_place(std::span<double>(sizes));
 }
 
-/// Drops stamps that the profile does not fit; true where any was.
-bool drop_misfits(std::vector<StarStamp>& stamps, const MoffatFit& fit) {
+/// Median misfit of the stars whose signal to noise is next to that of star s (they are in its
+/// order): what the profile lacks shows the more, the brighter the star.
+double usual_misfit(const std::vector<StarFit>& stars, std::size_t s) {
+    const std::size_t first = s < kMisfitNeighbours ? 0 : s - kMisfitNeighbours;
+    const std::size_t end = std::min(stars.size(), s + kMisfitNeighbours + 1);
     std::vector<double> misfits;
-    std::transform(fit.stars.begin(), fit.stars.end(), std::back_inserter(misfits),
-                   [](const StarFit& star) { return star.misfit; });
-    const double limit = kMostMisfit * median_in_place(std::span<double>(misfits));
+    for (std::size_t k = first; k < end; ++k) {
+        misfits.push_back(stars[k].misfit);
+    }
+    return median_in_place(std::span<double>(misfits));
+}
+
+/// Drops stamps that the profile fits worse than it fits others as bright; true where any was.
+bool drop_misfits(std::vector<StarStamp>& stamps, const MoffatFit& fit) {
     std::vector<StarStamp> kept;
     for (std::size_t s = 0; s < stamps.size(); ++s) {
-        if (fit.stars[s].misfit <= limit && fit.stars[s].amplitude_adu > 0.0) {
+        const StarFit& star = fit.stars[s];
+        if (star.misfit <= kMostMisfit * std::max(1.0, usual_misfit(fit.stars, s)) &&
+            star.amplitude_adu > 0.0) {
             kept.push_back(std::move(stamps[s]));
         }
     }
@@ -144,22 +157,39 @@ Stacked stack_pixel(const std::vector<Excess>& excesses, std::vector<float>& scr
     return weights > 0.0 ? Stacked{sum / weights, 1.0 / std::sqrt(weights)} : Stacked{};
 }
 
-/// How much of a table of values with unit errors is more than noise: the positive-part estimator
-/// of James & Stein 1961 (4th Berkeley Symp. 1, 361).
-class Significance {
-public:
-    void add(double value_in_errors) {
-        sum_ += value_in_errors * value_in_errors;
-        ++count_;
+/// A square grid about a centre.
+struct Grid {
+    explicit Grid(int r)
+        : radius(r),
+          values(static_cast<std::size_t>(2 * r + 1) * static_cast<std::size_t>(2 * r + 1)) {}
+    [[nodiscard]] double& at(int i, int j) {
+        return values[(j + radius) * (2 * radius + 1) + i + radius];
     }
-    [[nodiscard]] double shrinkage() const {
-        return sum_ > 0.0 ? std::max(0.0, 1.0 - count_ / sum_) : 0.0;
+    [[nodiscard]] double at(int i, int j) const {
+        return values[(j + radius) * (2 * radius + 1) + i + radius];
     }
-
-private:
-    double sum_ = 0.0;
-    int count_ = 0;
+    [[nodiscard]] bool holds(int i, int j) const {
+        return std::abs(i) <= radius && std::abs(j) <= radius;
+    }
+    int radius;
+    std::vector<double> values;
 };
+
+/// How much of the values about (i, j) is more than noise: the positive-part estimator of James &
+/// Stein 1961 (4th Berkeley Symp. 1, 361) on the neighbourhood. squares: of values in errors.
+double beyond_noise(const Grid& squares, int i, int j) {
+    double sum = 0.0;
+    int count = 0;
+    for (int y = j - kNeighbourhood; y <= j + kNeighbourhood; ++y) {
+        for (int x = i - kNeighbourhood; x <= i + kNeighbourhood; ++x) {
+            if (squares.holds(x, y)) {
+                sum += squares.at(x, y);
+                ++count;
+            }
+        }
+    }
+    return sum > count ? 1.0 - count / sum : 0.0;
+}
 
 /// A profile and a table of what stars show beyond it.
 class Image {
@@ -168,14 +198,9 @@ public:
         : shape_(fit.shape),
           quadrature_(PixelQuadrature::for_fwhm(fit.shape.fwhm())),
           volume_(fit.shape.volume()),
-          radius_(radius),
-          table_(static_cast<std::size_t>(2 * radius + 1) *
-                 static_cast<std::size_t>(2 * radius + 1)) {
+          table_(radius) {
         // A stack between pixels smooths what it finds; what it lost shows in the next one.
-        for (int pass = 0; pass < kMostPasses; ++pass) {
-            if (!improve(stamps, fit)) {
-                break;
-            }
+        for (int pass = 0; pass < kMostPasses && improve(stamps, fit); ++pass) {
         }
     }
 
@@ -191,27 +216,24 @@ public:
         return profile(dx, dy) + (1.0 - fy) * ((1.0 - fx) * table(i, j) + fx * table(i + 1, j)) +
                fy * ((1.0 - fx) * table(i, j + 1) + fx * table(i + 1, j + 1));
     }
-    [[nodiscard]] double table(int i, int j) const {
-        if (std::abs(i) > radius_ || std::abs(j) > radius_) {
-            return 0.0;
-        }
-        return table_[(j + radius_) * (2 * radius_ + 1) + i + radius_];
-    }
 
 private:
-    /// Adds to the table what the stars show beyond it; false where that was little.
+    [[nodiscard]] double table(int i, int j) const {
+        return table_.holds(i, j) ? table_.at(i, j) : 0.0;
+    }
+
+    /// Adds to the table what the stars show beyond it; false where that is noise.
     bool improve(const std::vector<StarStamp>& stamps, const MoffatFit& fit) {
         std::vector<std::vector<float>> residuals;
         for (std::size_t s = 0; s < stamps.size(); ++s) {
             residuals.push_back(residual_of(stamps[s], fit.stars[s]));
         }
-        std::vector<double> found;
-        found.reserve(table_.size());
+        Grid found(table_.radius);
+        Grid squares(table_.radius);
         std::vector<Excess> excesses;
         std::vector<float> scratch;
-        Significance significance;
-        for (int j = -radius_; j <= radius_; ++j) {
-            for (int i = -radius_; i <= radius_; ++i) {
+        for (int j = -table_.radius; j <= table_.radius; ++j) {
+            for (int i = -table_.radius; i <= table_.radius; ++i) {
                 const double expected = profile(i, j);
                 excesses.clear();
                 for (std::size_t s = 0; s < stamps.size(); ++s) {
@@ -223,18 +245,24 @@ private:
                     }
                 }
                 const Stacked stacked = stack_pixel(excesses, scratch);
-                const double ratio = stacked.error / expected;
-                if (ratio < 1.0) {
-                    significance.add(stacked.value / stacked.error);
-                }
-                found.push_back(stacked.value / (1.0 + ratio * ratio));
+                const double noise_over_profile = stacked.error / expected;
+                found.at(i, j) = stacked.value / (1.0 + noise_over_profile * noise_over_profile);
+                squares.at(i, j) = std::pow(stacked.value / stacked.error, 2);
             }
         }
-        const double part = significance.shrinkage();
-        for (std::size_t k = 0; k < table_.size(); ++k) {
-            table_[k] += part * found[k];
+        return add(found, squares);
+    }
+
+    bool add(const Grid& found, const Grid& squares) {
+        bool changed = false;
+        for (int j = -table_.radius; j <= table_.radius; ++j) {
+            for (int i = -table_.radius; i <= table_.radius; ++i) {
+                const double part = beyond_noise(squares, i, j);
+                table_.at(i, j) += part * found.at(i, j);
+                changed = changed || part > kLittle;
+            }
         }
-        return part > kLittle;
+        return changed;
     }
 
     [[nodiscard]] std::vector<float> residual_of(const StarStamp& stamp,
@@ -254,8 +282,7 @@ private:
     MoffatShape shape_;
     PixelQuadrature quadrature_;
     double volume_;
-    int radius_;
-    std::vector<double> table_;
+    Grid table_;
 };
 
 /// Twice the mean distance, over directions, at which the image falls to half its central value.
@@ -326,7 +353,7 @@ Psf measure_psf(std::vector<StarStamp> stamps) {
     const Image image(stamps, fit, psf.radius);
     for (int j = -psf.radius; j <= psf.radius; ++j) {
         for (int i = -psf.radius; i <= psf.radius; ++i) {
-            psf.values.push_back(static_cast<float>(image.profile(i, j) + image.table(i, j)));
+            psf.values.push_back(static_cast<float>(image.at(i, j)));
         }
     }
     normalize_psf(psf);
