@@ -74,26 +74,28 @@ double poisson_by_rejection(RandomStream& stream, double mean) {
 
 }  // namespace
 
+std::array<std::uint32_t, 4> philox_block(std::array<std::uint32_t, 4> counter,
+                                          std::array<std::uint32_t, 2> key) {
+    for (int round = 0; round < kRounds; ++round) {
+        const std::uint64_t product0 = kMultiplier0 * counter[0];
+        const std::uint64_t product1 = kMultiplier1 * counter[2];
+        counter = {static_cast<std::uint32_t>(product1 >> 32U) ^ counter[1] ^ key[0],
+                   static_cast<std::uint32_t>(product1),
+                   static_cast<std::uint32_t>(product0 >> 32U) ^ counter[3] ^ key[1],
+                   static_cast<std::uint32_t>(product0)};
+        key[0] += kWeyl0;
+        key[1] += kWeyl1;
+    }
+    return counter;
+}
+
 RandomStream::RandomStream(std::uint64_t seed, std::uint64_t stream)
     : key_{static_cast<std::uint32_t>(seed), static_cast<std::uint32_t>(seed >> 32U)},
       counter_{0, 0, static_cast<std::uint32_t>(stream),
                static_cast<std::uint32_t>(stream >> 32U)} {}
 
 void RandomStream::refill() {
-    std::array<std::uint32_t, 4> x = counter_;
-    std::uint32_t key0 = key_[0];
-    std::uint32_t key1 = key_[1];
-    for (int round = 0; round < kRounds; ++round) {
-        const std::uint64_t product0 = kMultiplier0 * x[0];
-        const std::uint64_t product1 = kMultiplier1 * x[2];
-        x = {static_cast<std::uint32_t>(product1 >> 32U) ^ x[1] ^ key0,
-             static_cast<std::uint32_t>(product1),
-             static_cast<std::uint32_t>(product0 >> 32U) ^ x[3] ^ key1,
-             static_cast<std::uint32_t>(product0)};
-        key0 += kWeyl0;
-        key1 += kWeyl1;
-    }
-    block_ = x;
+    block_ = philox_block(counter_, key_);
     used_ = 0;
     if (++counter_[0] == 0) {
         ++counter_[1];

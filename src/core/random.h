@@ -5,6 +5,10 @@
 
 namespace straymark {
 
+/// One block of Philox 4x32-10: a bijection of the counter for each key (Salmon et al. 2011, SC11).
+std::array<std::uint32_t, 4> philox_block(std::array<std::uint32_t, 4> counter,
+                                          std::array<std::uint32_t, 2> key);
+
 /// Counter-based random numbers (Philox 4x32-10, Salmon et al. 2011, SC11): the value depends on
 /// seed, stream and counter alone, so any number of threads draws the same numbers.
 class RandomStream {
