@@ -1,79 +1,63 @@
 #pragma once
 
 #include <cstdint>
-#include <memory>
 #include <optional>
-#include <span>
 #include <string>
 #include <vector>
 
+#include "io/files.h"
+#include "io/fits_scan.h"
+#include "io/fits_table.h"
+
 namespace straymark::io {
 
-/// One header-data unit of a FITS file.
-struct FitsPart {
-    std::string name;  ///< EXTNAME; empty: none
-    bool is_image = false;
-    int width = 0;  ///< images of two axes; 0: no data
-    int height = 0;
-    std::int64_t rows = 0;  ///< tables
-};
-
-/// A FITS file that this project wrote (masks, truth), read by cfitsio behind checks: plain name,
-/// regular file, sizes that fit the file, and sums verified before a part is decoded, so that a
-/// damaged byte is an error and not a wrong pixel. One object belongs to one thread.
+/// A FITS file that this project wrote (masks, truth), found sound as a whole (sound_units) when it
+/// is opened, so that a damaged byte is an error and not a wrong pixel. Const calls may come from
+/// several threads at once.
 class CheckedFits {
 public:
-    enum class Sums { required, where_present };
+    /// Throws InputError: not there, not FITS, damaged.
+    explicit CheckedFits(const std::string& path);
 
-    /// Opens `path` and lists its parts. Throws InputError: not there, not FITS, damaged header.
-    CheckedFits(std::string path, Sums sums);
-    ~CheckedFits();
-    CheckedFits(CheckedFits&&) noexcept;
-    CheckedFits& operator=(CheckedFits&&) noexcept;
-
-    [[nodiscard]] const std::string& path() const { return path_; }
-    [[nodiscard]] const std::vector<FitsPart>& parts() const { return parts_; }
-    /// Index of the part of this name; nothing where there is none.
-    [[nodiscard]] std::optional<int> find(const std::string& name) const;
+    [[nodiscard]] const std::string& path() const { return file_.path(); }
+    [[nodiscard]] const std::vector<FitsHdu>& units() const { return units_; }
+    /// The unit of this name; null where there is none.
+    [[nodiscard]] const FitsHdu* find(const std::string& name) const;
     /// The same; throws InputError naming what is there.
-    [[nodiscard]] int required(const std::string& name) const;
-
+    [[nodiscard]] const FitsHdu& required(const std::string& name) const;
     /// A keyword of the primary header as text; nothing where absent.
     [[nodiscard]] std::optional<std::string> primary_text(const std::string& keyword) const;
 
-    /// The pixels of an image, row by row from the first. Throws InputError where the sums do not
-    /// match, or the data do not decode.
-    [[nodiscard]] std::vector<float> float_image(int part) const;
-    [[nodiscard]] std::vector<std::int16_t> int16_image(int part) const;
+    /// The table of this name. Throws InputError where there is none.
+    [[nodiscard]] BinaryTable table(const std::string& name) const;
 
-    /// Columns of a table. Throw InputError where there is no such column, or the sums do not
-    /// match. number_column: every cell is finite unless `allow_nan`.
-    [[nodiscard]] std::vector<std::string> text_column(int part, const std::string& name) const;
-    [[nodiscard]] std::vector<double> number_column(int part, const std::string& name,
-                                                    bool allow_nan = false) const;
-    /// Variable-length arrays of numbers.
-    [[nodiscard]] std::vector<std::vector<float>> array_column(int part,
-                                                               const std::string& name) const;
+    /// The pixels of an image of two axes, row by row from the first. float_image: not compressed.
+    /// int16_image: signed 16-bit integers, decoded by cfitsio, which is told so before it sees any
+    /// data that their sums hold. Throw InputError where the image is of another kind.
+    [[nodiscard]] std::vector<float> float_image(const FitsHdu& unit) const;
+    [[nodiscard]] std::vector<std::int16_t> int16_image(const FitsHdu& unit) const;
 
     /// Throws InputError about this file.
     [[noreturn]] void refuse(const std::string& place, const std::string& found,
                              const std::string& expected, const std::string& advice) const;
 
 private:
-    struct Handle;
-    void check_is_plain_fits();
-    void enter(int part) const;
-    void verify(int part) const;
-    void scan_parts();
-    [[nodiscard]] int column_of(int part, const std::string& name) const;
-    [[nodiscard]] std::string place_of(int part) const;
-
-    std::string path_;
-    Sums sums_;
-    std::int64_t bytes_ = 0;
-    std::unique_ptr<Handle> handle_;
-    std::vector<FitsPart> parts_;
-    mutable std::vector<bool> verified_;
+    InputFile file_;
+    std::vector<FitsHdu> units_;
 };
+
+/// Width and height of an image unit, each at most 65,536 and 2^28 pixels in all; nothing where the
+/// unit holds no such image.
+struct ImageSize {
+    int width = 0;
+    int height = 0;
+};
+std::optional<ImageSize> image_size(const FitsHdu& unit);
+
+/// A scalar column as numbers. Throws InputError where there is none, it is text, or a cell is
+/// infinite or (unless allowed) not a number.
+enum class NotANumber { refused, allowed };
+std::vector<double> number_column(const BinaryTable& table, const std::string& name,
+                                  NotANumber nan = NotANumber::refused);
 
 }  // namespace straymark::io

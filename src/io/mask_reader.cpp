@@ -17,20 +17,18 @@ template <typename Row>
 class TableRows {
 public:
     TableRows(const CheckedFits& file, const std::string& table)
-        : file_(file),
-          part_(file.required(table)),
-          table_(table),
-          rows_(static_cast<std::size_t>(file.parts()[static_cast<std::size_t>(part_)].rows)) {}
+        : table_(file.table(table)), rows_(table_.rows()) {}
 
     TableRows& fill(const std::string& name, std::string Row::*member) {
-        std::vector<std::string> cells = file_.text_column(part_, name);
+        std::vector<std::string> cells = table_.strings(name);
         for (std::size_t i = 0; i < rows_.size(); ++i) {
             rows_[i].*member = std::move(cells[i]);
         }
         return *this;
     }
-    TableRows& fill(const std::string& name, double Row::*member, bool allow_nan = false) {
-        const std::vector<double> cells = file_.number_column(part_, name, allow_nan);
+    TableRows& fill(const std::string& name, double Row::*member,
+                    NotANumber nan = NotANumber::refused) {
+        const std::vector<double> cells = number_column(table_, name, nan);
         for (std::size_t i = 0; i < rows_.size(); ++i) {
             rows_[i].*member = cells[i];
         }
@@ -38,17 +36,10 @@ public:
     }
     template <typename Integer>
     TableRows& fill(const std::string& name, Integer Row::*member) {
-        const std::vector<double> cells = file_.number_column(part_, name);
+        const std::vector<double> cells = number_column(table_, name);
         for (std::size_t i = 0; i < rows_.size(); ++i) {
             rows_[i].*member = static_cast<Integer>(
                 whole(cells[i], static_cast<double>(std::numeric_limits<Integer>::max()), name, i));
-        }
-        return *this;
-    }
-    TableRows& fill(const std::string& name, std::vector<float> Row::*member) {
-        std::vector<std::vector<float>> cells = file_.array_column(part_, name);
-        for (std::size_t i = 0; i < rows_.size(); ++i) {
-            rows_[i].*member = std::move(cells[i]);
         }
         return *this;
     }
@@ -60,15 +51,13 @@ private:
                                std::size_t row) const {
         constexpr double kExact = 9007199254740992.0;
         if (std::abs(cell) > std::min(largest, kExact) || cell != std::floor(cell)) {
-            file_.refuse(fmt::format("{}, row {}, column {}", table_, row + 1, name),
-                         fmt::format("{}", cell), "a whole number", "make the mask again");
+            table_.refuse(fmt::format("row {}, column {}", row + 1, name), fmt::format("{}", cell),
+                          "a whole number", "make the mask again");
         }
         return cell;
     }
 
-    const CheckedFits& file_;
-    int part_;
-    std::string table_;
+    BinaryTable table_;
     std::vector<Row> rows_;
 };
 
@@ -82,16 +71,16 @@ struct BackgroundRow {
 
 }  // namespace
 
-MaskFile::MaskFile(const std::string& path) : file_(path, CheckedFits::Sums::required) {
+MaskFile::MaskFile(const std::string& path) : file_(path) {
     const std::optional<std::string> id = file_.primary_text("OBS_ID");
-    if (!id || !file_.find("BITS")) {
+    if (!id || file_.find("BITS") == nullptr) {
         file_.refuse("primary header", id ? "no BITS table" : "no OBS_ID", "a mask file",
                      "give a file that `straymark build` wrote");
     }
     exposure_ = *id;
-    for (const FitsPart& part : file_.parts()) {
-        if (part.is_image && part.width > 0) {
-            images_.push_back({part.name, part.width, part.height});
+    for (const FitsHdu& unit : file_.units()) {
+        if (const std::optional<ImageSize> size = image_size(unit)) {
+            images_.push_back({unit.name, size->width, size->height});
         }
     }
 }
@@ -121,8 +110,8 @@ std::vector<MarkRow> MaskFile::marks() const {
         .fill("detector", &MarkRow::detector)
         .fill("cause", &MarkRow::cause)
         .fill("source", &MarkRow::source)
-        .fill("source_x", &MarkRow::source_x, true)
-        .fill("source_y", &MarkRow::source_y, true)
+        .fill("source_x", &MarkRow::source_x, NotANumber::allowed)
+        .fill("source_y", &MarkRow::source_y, NotANumber::allowed)
         .fill("shape", &MarkRow::shape)
         .fill("calibration", &MarkRow::calibration)
         .fill("status", &MarkRow::status)
@@ -134,11 +123,10 @@ std::vector<MarkRow> MaskFile::marks() const {
         .fill("y2", &MarkRow::y2)
         .fill("strength_e", &MarkRow::strength_e)
         .fill("error_e", &MarkRow::error_e)
-        .fill("peak_e", &MarkRow::peak_e, true)
-        .fill("peak_e", &MarkRow::peak_e)
+        .fill("peak_e", &MarkRow::peak_e, NotANumber::allowed)
         .fill("response", &MarkRow::response)
         .fill("response_error", &MarkRow::response_error)
-        .fill("significance", &MarkRow::significance, true)
+        .fill("significance", &MarkRow::significance, NotANumber::allowed)
         .fill("area_px", &MarkRow::area_px)
         .fill("count", &MarkRow::count)
         .take();
@@ -151,12 +139,13 @@ std::vector<DetectionRow> MaskFile::detection() const {
         .fill("state", &DetectionRow::state)
         .fill("reason", &DetectionRow::reason)
         .fill("psf_source", &DetectionRow::psf_source)
-        .fill("noise_e", &DetectionRow::noise_e, true)
-        .fill("sky_e", &DetectionRow::sky_e, true)
-        .fill("gain", &DetectionRow::gain, true)
-        .fill("fwhm_px", &DetectionRow::fwhm_px, true)
-        .fill("noise_equivalent_area_px", &DetectionRow::noise_equivalent_area_px, true)
-        .fill("floor_e", &DetectionRow::floor_e, true)
+        .fill("noise_e", &DetectionRow::noise_e, NotANumber::allowed)
+        .fill("sky_e", &DetectionRow::sky_e, NotANumber::allowed)
+        .fill("gain", &DetectionRow::gain, NotANumber::allowed)
+        .fill("fwhm_px", &DetectionRow::fwhm_px, NotANumber::allowed)
+        .fill("noise_equivalent_area_px", &DetectionRow::noise_equivalent_area_px,
+              NotANumber::allowed)
+        .fill("floor_e", &DetectionRow::floor_e, NotANumber::allowed)
         .fill("psf_stars", &DetectionRow::psf_stars)
         .take();
 }
@@ -171,7 +160,7 @@ std::vector<AssessedRow> MaskFile::assessed() const {
         .fill("flagged_fraction", &AssessedRow::flagged_fraction)
         .fill("marginal_fraction", &AssessedRow::marginal_fraction)
         .fill("unassessed_fraction", &AssessedRow::unassessed_fraction)
-        .fill("truncation_response", &AssessedRow::truncation_response, true)
+        .fill("truncation_response", &AssessedRow::truncation_response, NotANumber::allowed)
         .take();
 }
 

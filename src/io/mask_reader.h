@@ -12,7 +12,8 @@
 namespace straymark::io {
 
 /// A mask file read back (docs/mask_file.md). What it says of itself is taken from the file alone:
-/// the values of the bits come from its BITS table. One object belongs to one thread.
+/// the values of the bits come from its BITS table. Const calls may come from several threads at
+/// once.
 class MaskFile {
 public:
     /// One detector's image in the file.
@@ -39,7 +40,6 @@ public:
     [[nodiscard]] std::map<std::string, std::int32_t> bit_values() const;
     [[nodiscard]] std::vector<MarkRow> marks() const;
     [[nodiscard]] std::vector<DetectionRow> detection() const;
-    [[nodiscard]] std::vector<PsfRow> psfs() const;
     [[nodiscard]] std::vector<AssessedRow> assessed() const;
     /// Of the detection that the mask was made for; nothing where DETECTION has no row.
     [[nodiscard]] std::optional<int> background_px() const;

@@ -116,7 +116,7 @@ ExposureMasks::ExposureMasks(const std::vector<std::string>& paths, const TruthF
 
 void ExposureMasks::check_detectors(const Loaded& loaded, const TruthFile& truth) const {
     for (const MaskFile::Image& image : loaded.file.images()) {
-        const std::optional<TruthFile::Size> size = truth.size(image.detector, kind_);
+        const std::optional<ImageSize> size = truth.size(image.detector, kind_);
         const std::string found =
             fmt::format("detector {} of {} x {} pixels", image.detector, image.width, image.height);
         if (!size) {

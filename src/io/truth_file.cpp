@@ -26,16 +26,16 @@ std::string detector_of(const std::string& amplifier_name) {
 
 }  // namespace
 
-TruthFile::TruthFile(const std::string& path) : file_(path, CheckedFits::Sums::where_present) {
+TruthFile::TruthFile(const std::string& path) : file_(path) {
     const std::optional<std::string> format = file_.primary_text("FORMAT");
     if (format != kFormat) {
         file_.refuse("primary header, FORMAT", format.value_or("nothing"), kFormat,
                      "give a truth file that `straymark simulate` wrote");
     }
     exposure_ = file_.primary_text("OBS_ID").value_or("");
-    for (const FitsPart& part : file_.parts()) {
-        if (part.is_image && part.name.ends_with(kPsfSuffix)) {
-            detectors_.push_back(part.name.substr(0, part.name.size() - kPsfSuffix.size()));
+    for (const FitsHdu& unit : file_.units()) {
+        if (unit.name.ends_with(kPsfSuffix)) {
+            detectors_.push_back(unit.name.substr(0, unit.name.size() - kPsfSuffix.size()));
         }
     }
     if (exposure_.empty() || detectors_.empty()) {
@@ -47,15 +47,15 @@ TruthFile::TruthFile(const std::string& path) : file_(path, CheckedFits::Sums::w
 }
 
 void TruthFile::read_amplifiers() {
-    const int table = file_.required("AMPLIFIERS");
-    const std::vector<std::string> detector = file_.text_column(table, "detector");
-    const std::vector<std::string> amplifier = file_.text_column(table, "amplifier");
-    const std::vector<double> x1 = file_.number_column(table, "x1");
-    const std::vector<double> x2 = file_.number_column(table, "x2");
-    const std::vector<double> y1 = file_.number_column(table, "y1");
-    const std::vector<double> y2 = file_.number_column(table, "y2");
-    const std::vector<double> gain = file_.number_column(table, "gain");
-    const std::vector<double> noise = file_.number_column(table, "noise_e");
+    const BinaryTable table = file_.table("AMPLIFIERS");
+    const std::vector<std::string> detector = table.strings("detector");
+    const std::vector<std::string> amplifier = table.strings("amplifier");
+    const std::vector<double> x1 = number_column(table, "x1");
+    const std::vector<double> x2 = number_column(table, "x2");
+    const std::vector<double> y1 = number_column(table, "y1");
+    const std::vector<double> y2 = number_column(table, "y2");
+    const std::vector<double> gain = number_column(table, "gain");
+    const std::vector<double> noise = number_column(table, "noise_e");
     for (std::size_t i = 0; i < detector.size(); ++i) {
         const std::string name = detector[i] + "/" + amplifier[i];
         for (const double edge : {x1[i], x2[i], y1[i], y2[i]}) {
@@ -79,13 +79,13 @@ void TruthFile::read_amplifiers() {
 }
 
 void TruthFile::read_echoes() {
-    const int table = file_.required("ECHOES");
-    std::vector<std::string> victim = file_.text_column(table, "victim");
-    std::vector<std::string> source = file_.text_column(table, "source");
-    const std::vector<double> x = file_.number_column(table, "x");
-    const std::vector<double> y = file_.number_column(table, "y");
-    const std::vector<double> total = file_.number_column(table, "total_e");
-    const std::vector<double> peak = file_.number_column(table, "peak_e");
+    const BinaryTable table = file_.table("ECHOES");
+    std::vector<std::string> victim = table.strings("victim");
+    std::vector<std::string> source = table.strings("source");
+    const std::vector<double> x = number_column(table, "x");
+    const std::vector<double> y = number_column(table, "y");
+    const std::vector<double> total = number_column(table, "total_e");
+    const std::vector<double> peak = number_column(table, "peak_e");
     for (std::size_t i = 0; i < victim.size(); ++i) {
         if (std::max(std::abs(x[i]), std::abs(y[i])) > kFarthestPx) {
             file_.refuse(fmt::format("ECHOES, row {}", i + 1),
@@ -98,11 +98,14 @@ void TruthFile::read_echoes() {
 }
 
 score::TrueDetector TruthFile::detector(const std::string& id, const std::string& kind) const {
-    const int part = file_.required(id + "." + kind);
+    const std::optional<ImageSize> shape = size(id, kind);
+    if (!shape) {
+        file_.refuse("", "no image of " + id + "." + kind, "one of two axes", "simulate it again");
+    }
     score::TrueDetector detector;
     detector.id = id;
-    detector.width = file_.parts()[static_cast<std::size_t>(part)].width;
-    detector.height = file_.parts()[static_cast<std::size_t>(part)].height;
+    detector.width = shape->width;
+    detector.height = shape->height;
     if (const auto found = amplifiers_.find(id); found != amplifiers_.end()) {
         detector.amplifiers = found->second;
     }
@@ -111,7 +114,7 @@ score::TrueDetector TruthFile::detector(const std::string& id, const std::string
         detector.echoes = found->second;
     }
     detector.psf = psf(id);
-    detector.signal_e = file_.float_image(part);
+    detector.signal_e = file_.float_image(file_.required(id + "." + kind));
     if (!std::all_of(detector.signal_e.begin(), detector.signal_e.end(),
                      [](float value) { return std::isfinite(value); })) {
         file_.refuse(id + "." + kind, "pixels that are not finite", "electrons",
@@ -120,27 +123,22 @@ score::TrueDetector TruthFile::detector(const std::string& id, const std::string
     return detector;
 }
 
-std::optional<TruthFile::Size> TruthFile::size(const std::string& id,
-                                               const std::string& kind) const {
-    const std::optional<int> part = file_.find(id + "." + kind);
-    if (!part) {
-        return std::nullopt;
-    }
-    const FitsPart& image = file_.parts()[static_cast<std::size_t>(*part)];
-    return Size{image.width, image.height};
+std::optional<ImageSize> TruthFile::size(const std::string& id, const std::string& kind) const {
+    const FitsHdu* unit = file_.find(id + "." + kind);
+    return unit == nullptr ? std::nullopt : image_size(*unit);
 }
 
 score::TruePsf TruthFile::psf(const std::string& id) const {
     const std::string name = id + std::string(kPsfSuffix);
-    const int part = file_.required(name);
-    const FitsPart& size = file_.parts()[static_cast<std::size_t>(part)];
+    const FitsHdu& unit = file_.required(name);
+    const ImageSize size = image_size(unit).value_or(ImageSize{});
     constexpr int kLargestPsf = 1001;
     if (size.width != size.height || size.width % 2 == 0 || size.width > kLargestPsf) {
         file_.refuse(name, fmt::format("{} x {} pixels", size.width, size.height),
                      fmt::format("a square of an odd side up to {}", kLargestPsf),
                      "simulate it again");
     }
-    score::TruePsf psf{size.width / 2, file_.float_image(part)};
+    score::TruePsf psf{size.width / 2, file_.float_image(unit)};
     double sum = 0.0;
     bool negative = false;
     for (const float value : psf.values) {

@@ -10,7 +10,8 @@
 
 namespace straymark::io {
 
-/// The known truth of one simulated exposure (docs/judging.md). One object belongs to one thread.
+/// The known truth of one simulated exposure (docs/judging.md). Const calls may come
+/// from several threads at once.
 class TruthFile {
 public:
     /// Throws InputError: not there, another format, damaged, tables that contradict the images.
@@ -20,12 +21,9 @@ public:
     [[nodiscard]] const std::string& exposure() const { return exposure_; }  ///< OBS_ID
     [[nodiscard]] const std::vector<std::string>& detectors() const { return detectors_; }
 
-    struct Size {
-        int width = 0;
-        int height = 0;
-    };
     /// Of the truth of `kind` on a detector; nothing where there is none.
-    [[nodiscard]] std::optional<Size> size(const std::string& id, const std::string& kind) const;
+    [[nodiscard]] std::optional<ImageSize> size(const std::string& id,
+                                                const std::string& kind) const;
 
     /// The truth of `kind` ("crosstalk") on one detector. Throws InputError where its images are
     /// missing, damaged or hold values that are not finite.
