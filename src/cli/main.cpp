@@ -18,6 +18,7 @@ int run(int argc, char** argv) {
     line.app.name("straymark");
     line.app.require_subcommand(1);
     line.app.set_version_flag("--version", "straymark " STRAYMARK_VERSION);
+    add_simulate(line);
     try {
         line.app.parse(argc, argv);
     } catch (const CLI::ParseError& error) {

@@ -17,9 +17,13 @@ OpenSite::OpenSite(const std::string& site_file) : site_(io::load_site(site_file
         stars_problem_ = error.what();
     }
     raw_ = io::make_raw_reader(site_.camera);
-    calibrations_ = io::make_calibration_store(site_.calibrations_path);
+    calibrations_ = std::make_unique<io::CalibrationFolder>(site_.calibrations_path);
     digests_ = io::make_digest_store(site_.digests_path);
     masks_ = std::make_unique<io::MaskFolder>(site_.masks_path);
+}
+
+void OpenSite::verify_stars() const {
+    io::verify_star_list(site_.stars_path);
 }
 
 NightPorts OpenSite::ports() {

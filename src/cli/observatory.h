@@ -3,6 +3,7 @@
 #include <memory>
 #include <string>
 
+#include "io/calibration_store.h"
 #include "night/build.h"
 #include "night/ports.h"
 #include "night/site.h"
@@ -20,6 +21,9 @@ public:
     [[nodiscard]] const Site& site() const { return site_; }
     [[nodiscard]] const StarList* stars() const { return stars_.get(); }
     [[nodiscard]] const std::string& stars_problem() const { return stars_problem_; }
+    [[nodiscard]] const io::CalibrationFolder& calibrations() const { return *calibrations_; }
+    /// Reads the whole star list; throws InputError where it is damaged.
+    void verify_stars() const;
     [[nodiscard]] NightPorts ports();
 
 private:
@@ -27,7 +31,7 @@ private:
     std::unique_ptr<StarList> stars_;
     std::string stars_problem_;
     std::unique_ptr<RawReader> raw_;
-    std::unique_ptr<CalibrationStore> calibrations_;
+    std::unique_ptr<io::CalibrationFolder> calibrations_;
     std::unique_ptr<DigestStore> digests_;
     std::unique_ptr<MaskStore> masks_;
 };

@@ -55,9 +55,10 @@ void gather_row(const AmplifierFrame& frame, const std::vector<PixelBox>& strips
             continue;
         }
         const int stride = 1 + (strip.width() - 1) / kMostColumns;
-        for (int tick = strip.x0; tick < strip.x1; tick += stride) {
-            const float value =
-                frame.pixels[static_cast<std::size_t>(file_index(frame, {tick, row}))];
+        const std::ptrdiff_t first = file_index(frame, {strip.x0, row});
+        const std::ptrdiff_t step = file_index(frame, {strip.x0 + stride, row}) - first;
+        for (int k = 0; strip.x0 + k * stride < strip.x1; ++k) {
+            const float value = frame.pixels[static_cast<std::size_t>(first + k * step)];
             if (std::isfinite(value)) {
                 out.push_back(value);
             }
@@ -106,20 +107,28 @@ float clipped_mean(std::vector<float>& values, float reach) {
     return count > 0 ? static_cast<float>(median + sum / count) : median;
 }
 
+/// Running median of the finite levels; where a window has none, `fallback`.
 std::vector<float> running_median(const std::vector<float>& levels, float fallback) {
     const int count = static_cast<int>(levels.size());
     std::vector<float> smooth(levels.size());
-    std::vector<float> window;
+    std::vector<float> window;  // ordered
+    int begin = 0;
+    int end = 0;
     for (int r = 0; r < count; ++r) {
         const int half = std::max(kLeastHalfWindow, std::min({kHalfWindow, r, count - 1 - r}));
-        window.clear();
-        for (int k = std::max(0, r - half); k <= std::min(count - 1, r + half); ++k) {
-            if (std::isfinite(levels[k])) {
-                window.push_back(levels[k]);
+        for (; end <= std::min(count - 1, r + half); ++end) {
+            if (std::isfinite(levels[end])) {
+                window.insert(std::upper_bound(window.begin(), window.end(), levels[end]),
+                              levels[end]);
             }
         }
-        smooth[r] = window.empty() ? fallback
-                                   : static_cast<float>(median_in_place(std::span<float>(window)));
+        for (; begin < r - half; ++begin) {
+            if (std::isfinite(levels[begin])) {
+                window.erase(std::lower_bound(window.begin(), window.end(), levels[begin]));
+            }
+        }
+        const std::size_t size = window.size();
+        smooth[r] = size == 0 ? fallback : 0.5F * (window[(size - 1) / 2] + window[size / 2]);
     }
     return smooth;
 }

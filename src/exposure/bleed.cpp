@@ -206,6 +206,11 @@ private:
         }
     }
 
+    /// What was not kept lies anywhere up to the floor.
+    static double expected_of(const SignalLookup::Pixel& pixel) {
+        return std::max(pixel.signal_e, 0.5 * pixel.floor_e);
+    }
+
     /// Median signal of the columns beside the trail [first_u, last_u] in row v.
     [[nodiscard]] double beside(int first_u, int last_u, int v) const {
         std::array<double, 2 * kBeside.size()> values{};
@@ -214,7 +219,7 @@ private:
             for (const int u : {first_u - distance, last_u + distance}) {
                 const SignalLookup::Pixel pixel = at(u, v);
                 if (pixel.on_detector) {
-                    values[count++] = pixel.signal_e;
+                    values[count++] = expected_of(pixel);
                 }
             }
         }
@@ -236,7 +241,7 @@ private:
             const SignalLookup::Pixel pixel =
                 at(static_cast<int>(std::lround(u)), static_cast<int>(std::lround(core.v)));
             if (pixel.on_detector) {
-                star = std::min(star, pixel.signal_e);
+                star = std::min(star, expected_of(pixel));
             }
         }
         return std::isfinite(star) ? star : 0.0;

@@ -33,6 +33,7 @@ struct Sample {
     double i = 0.0;
     double j = 0.0;
     double value = 0.0;
+    double error = 1.0;
 };
 
 /// The normal equations in blocks: s for a star's own parameters, t for the common ones.
@@ -54,8 +55,10 @@ std::vector<Sample> samples_of(const StarStamp& stamp, double radius_px) {
     for (int j = -reach; j <= reach; ++j) {
         for (int i = -reach; i <= reach; ++i) {
             const float value = stamp.at(i, j);
-            if (std::hypot(i - stamp.dx, j - stamp.dy) <= radius_px && std::isfinite(value)) {
-                samples.push_back({double(i), double(j), double(value)});
+            const double squared =
+                (i - stamp.dx) * (i - stamp.dx) + (j - stamp.dy) * (j - stamp.dy);
+            if (squared <= radius_px * radius_px && std::isfinite(value)) {
+                samples.push_back({double(i), double(j), double(value), 1.0});
             }
         }
     }
@@ -77,13 +80,21 @@ public:
         }
     }
 
-    /// Equations at `at`; the pixels' errors are those that `model` predicts, so that costs
-    /// compare.
-    [[nodiscard]] NormalEquations build(const Parameters& at, const Parameters& model) const {
+    /// Sets the pixels' errors to those that these parameters predict.
+    void set_errors(const Parameters& at) {
+        for (std::size_t s = 0; s < stamps_.size(); ++s) {
+            for (Sample& sample : samples_[s]) {
+                sample.error =
+                    std::sqrt(variance_of(stamps_[s].noise, profile(at, at.stars[s], sample)));
+            }
+        }
+    }
+
+    [[nodiscard]] NormalEquations build(const Parameters& at) const {
         NormalEquations equations;
         equations.stars.resize(stamps_.size());
         for (std::size_t s = 0; s < stamps_.size(); ++s) {
-            add_star(s, at, model, equations);
+            add_star(s, at, equations);
         }
         return equations;
     }
@@ -92,30 +103,27 @@ public:
         double sum = 0.0;
         const StarFit& star = at.stars[s];
         for (const Sample& sample : samples_[s]) {
-            const double profile =
-                star.amplitude_adu *
-                quadrature_.value(at.shape, sample.i - star.dx, sample.j - star.dy);
-            const double residual = sample.value - star.background_adu - profile;
-            sum += std::min(9.0, residual * residual / variance_of(stamps_[s].noise, profile));
+            const double residual =
+                (sample.value - star.background_adu - profile(at, star, sample)) / sample.error;
+            sum += std::min(9.0, residual * residual);
         }
         return sum / std::max<double>(1.0, double(samples_[s].size()));
     }
 
 private:
-    void add_star(std::size_t s, const Parameters& at, const Parameters& model,
-                  NormalEquations& equations) const {
+    [[nodiscard]] double profile(const Parameters& at, const StarFit& star,
+                                 const Sample& sample) const {
+        return star.amplitude_adu *
+               quadrature_.value(at.shape, sample.i - star.dx, sample.j - star.dy);
+    }
+
+    void add_star(std::size_t s, const Parameters& at, NormalEquations& equations) const {
         const StarFit& star = at.stars[s];
-        const StarFit& reference = model.stars[s];
         StarBlock& block = equations.stars[s];
         for (const Sample& sample : samples_[s]) {
             const MoffatPixel pixel =
                 quadrature_.derivatives(at.shape, sample.i - star.dx, sample.j - star.dy);
-            const double expected =
-                &at == &model ? star.amplitude_adu * pixel.value
-                              : reference.amplitude_adu *
-                                    quadrature_.value(model.shape, sample.i - reference.dx,
-                                                      sample.j - reference.dy);
-            const double error = std::sqrt(variance_of(stamps_[s].noise, expected));
+            const double error = sample.error;
             const double residual =
                 (sample.value - star.background_adu - star.amplitude_adu * pixel.value) / error;
             const double size = std::abs(residual);
@@ -181,10 +189,11 @@ bool finite(const Parameters& parameters) {
            });
 }
 
-/// Levenberg-Marquardt with the pixels' errors held at those of the first parameters.
-bool descend(const Problem& problem, Parameters& parameters) {
-    const Parameters model = parameters;
-    NormalEquations equations = problem.build(parameters, model);
+/// Levenberg-Marquardt with the pixels' errors held at those of the first parameters, so that the
+/// costs compare.
+bool descend(Problem& problem, Parameters& parameters) {
+    problem.set_errors(parameters);
+    NormalEquations equations = problem.build(parameters);
     double damping = 1e-3;
     for (int k = 0; k < kMostSteps && damping < kMostDamping; ++k) {
         Parameters next = step_from(parameters, equations, damping);
@@ -192,7 +201,7 @@ bool descend(const Problem& problem, Parameters& parameters) {
             damping *= 10.0;
             continue;
         }
-        NormalEquations there = problem.build(next, model);
+        NormalEquations there = problem.build(next);
         if (!(there.cost <= equations.cost)) {
             damping *= 10.0;
             continue;
@@ -211,7 +220,7 @@ bool descend(const Problem& problem, Parameters& parameters) {
 }  // namespace
 
 MoffatFit fit_moffat(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px) {
-    const Problem problem(stamps, start_fwhm_px, radius_px);
+    Problem problem(stamps, start_fwhm_px, radius_px);
     Parameters parameters{MoffatShape::circular(start_fwhm_px, kStartBeta), {}};
     const double volume = parameters.shape.volume();
     for (const StarStamp& stamp : stamps) {

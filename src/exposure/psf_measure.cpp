@@ -26,6 +26,10 @@ constexpr std::size_t kLeastFitted = 12;
 constexpr double kFitFwhms = 3.0;
 /// A star whose misfit is this many times the median is not one, or not alone.
 constexpr double kMostMisfit = 2.0;
+/// The table of what stars show beyond the profile is improved this often, at most, and as long as
+/// more than the second part of what is found is not noise.
+constexpr int kMostPasses = 4;
+constexpr double kLittle = 0.3;
 /// Stack pixels farther from their median than this many errors are left out.
 constexpr double kStackClip = 4.0;
 
@@ -140,6 +144,23 @@ Stacked stack_pixel(const std::vector<Excess>& excesses, std::vector<float>& scr
     return weights > 0.0 ? Stacked{sum / weights, 1.0 / std::sqrt(weights)} : Stacked{};
 }
 
+/// How much of a table of values with unit errors is more than noise: the positive-part estimator
+/// of James & Stein 1961 (4th Berkeley Symp. 1, 361).
+class Significance {
+public:
+    void add(double value_in_errors) {
+        sum_ += value_in_errors * value_in_errors;
+        ++count_;
+    }
+    [[nodiscard]] double shrinkage() const {
+        return sum_ > 0.0 ? std::max(0.0, 1.0 - count_ / sum_) : 0.0;
+    }
+
+private:
+    double sum_ = 0.0;
+    int count_ = 0;
+};
+
 /// A profile and a table of what stars show beyond it.
 class Image {
 public:
@@ -147,8 +168,15 @@ public:
         : shape_(fit.shape),
           quadrature_(PixelQuadrature::for_fwhm(fit.shape.fwhm())),
           volume_(fit.shape.volume()),
-          radius_(radius) {
-        stack(stamps, fit);
+          radius_(radius),
+          table_(static_cast<std::size_t>(2 * radius + 1) *
+                 static_cast<std::size_t>(2 * radius + 1)) {
+        // A stack between pixels smooths what it finds; what it lost shows in the next one.
+        for (int pass = 0; pass < kMostPasses; ++pass) {
+            if (!improve(stamps, fit)) {
+                break;
+            }
+        }
     }
 
     [[nodiscard]] double profile(double dx, double dy) const {
@@ -171,13 +199,17 @@ public:
     }
 
 private:
-    void stack(const std::vector<StarStamp>& stamps, const MoffatFit& fit) {
+    /// Adds to the table what the stars show beyond it; false where that was little.
+    bool improve(const std::vector<StarStamp>& stamps, const MoffatFit& fit) {
         std::vector<std::vector<float>> residuals;
         for (std::size_t s = 0; s < stamps.size(); ++s) {
             residuals.push_back(residual_of(stamps[s], fit.stars[s]));
         }
+        std::vector<double> found;
+        found.reserve(table_.size());
         std::vector<Excess> excesses;
         std::vector<float> scratch;
+        Significance significance;
         for (int j = -radius_; j <= radius_; ++j) {
             for (int i = -radius_; i <= radius_; ++i) {
                 const double expected = profile(i, j);
@@ -192,20 +224,27 @@ private:
                 }
                 const Stacked stacked = stack_pixel(excesses, scratch);
                 const double ratio = stacked.error / expected;
-                table_.push_back(stacked.value / (1.0 + ratio * ratio));
+                if (ratio < 1.0) {
+                    significance.add(stacked.value / stacked.error);
+                }
+                found.push_back(stacked.value / (1.0 + ratio * ratio));
             }
         }
+        const double part = significance.shrinkage();
+        for (std::size_t k = 0; k < table_.size(); ++k) {
+            table_[k] += part * found[k];
+        }
+        return part > kLittle;
     }
 
     [[nodiscard]] std::vector<float> residual_of(const StarStamp& stamp,
                                                  const StarFit& star) const {
+        const double flux = star.amplitude_adu * volume_;
         std::vector<float> residual;
         residual.reserve(stamp.values.size());
         for (int j = -stamp.radius; j <= stamp.radius; ++j) {
             for (int i = -stamp.radius; i <= stamp.radius; ++i) {
-                const double model =
-                    star.background_adu +
-                    star.amplitude_adu * quadrature_.value(shape_, i - star.dx, j - star.dy);
+                const double model = star.background_adu + flux * at(i - star.dx, j - star.dy);
                 residual.push_back(stamp.at(i, j) - static_cast<float>(model));
             }
         }

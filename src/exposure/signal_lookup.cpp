@@ -31,9 +31,9 @@ SignalLookup::Pixel SignalLookup::at(DetectorPixel pixel) const {
             !amplifier.readout.section().contains(pixel.x, pixel.y)) {
             continue;
         }
-        const float value = kept_value(digest, amplifier.readout.readout_from_detector(pixel));
-        return {true, value * amplifier.gain_e_per_adu,
-                digest.noise_adu * amplifier.gain_e_per_adu};
+        const double gain = amplifier.gain_e_per_adu;
+        return {true, gain * kept_value(digest, amplifier.readout.readout_from_detector(pixel)),
+                gain * digest.noise_adu, gain * digest.floor_adu};
     }
     return {};
 }

@@ -18,6 +18,7 @@ public:
         bool on_detector = false;  ///< on an amplifier that is `ok`
         double signal_e = 0.0;     ///< above the local sky; zero where it is below the floor
         double noise_e = 0.0;      ///< of the amplifier's sky
+        double floor_e = 0.0;      ///< of what the amplifier's digest keeps
     };
     /// O(amplifiers + log runs).
     [[nodiscard]] Pixel at(DetectorPixel pixel) const;

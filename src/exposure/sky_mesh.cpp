@@ -14,9 +14,9 @@ namespace straymark {
 namespace {
 
 constexpr int kCellPixels = 128;
-/// Pixels sampled in each cell, at most about: the level's error is then 4 % of the noise.
-constexpr int kCellSample = 1024;
-/// Reach of a cell's mean about its median, in standard deviations; at 2 a few per cent of stars
+/// Pixels sampled in each cell, at most about: the level's error is then 5 % of the noise.
+constexpr int kCellSample = 512;
+/// Reach of a cell's mean about its median, in units of the noise; at 2 a few per cent of stars
 /// move the mean by less than its error.
 constexpr double kCellClip = 2.0;
 /// A cell with fewer valid samples than this fraction says nothing.
@@ -56,28 +56,25 @@ void sample_cell(const AmplifierPlane& raw, const BiasLevels& bias, float satura
     }
 }
 
-/// Level of a cell's sample, which it reorders: the mean within kCellClip of the median. The
-/// scatter is taken from the pixels below the median, where there are no stars.
-float cell_level(std::vector<float>& sample) {
+/// Level of a cell's sample, which it reorders: the mean of what lies within `reach` of the median.
+float cell_level(std::vector<float>& sample, float reach) {
     const auto middle = sample.begin() + static_cast<std::ptrdiff_t>(sample.size() / 2);
     std::nth_element(sample.begin(), middle, sample.end());
-    const auto lower = sample.begin() + static_cast<std::ptrdiff_t>(sample.size() * 16 / 100);
-    std::nth_element(sample.begin(), lower, middle);
     const float median = *middle;
-    const float reach = static_cast<float>(kCellClip) * (median - *lower);
-    double sum = 0.0;
-    int count = 0;
+    float sum = 0.0F;
+    float count = 0.0F;
     for (const float value : sample) {
-        if (std::abs(value - median) <= reach) {
-            sum += double(value) - double(median);
-            ++count;
-        }
+        const float weight = std::abs(value - median) <= reach ? 1.0F : 0.0F;
+        sum += weight * (value - median);
+        count += weight;
     }
-    return static_cast<float>(median + sum / count);
+    return median + sum / count;
 }
 
-Grid measure_cells(const AmplifierPlane& raw, const BiasLevels& bias, float saturation_adu) {
+Grid measure_cells(const AmplifierPlane& raw, const BiasLevels& bias, float saturation_adu,
+                   double noise) {
     Grid grid{cells_along(raw.ticks), cells_along(raw.rows), {}};
+    const auto reach = static_cast<float>(kCellClip * noise);
     std::vector<float> sample;
     for (int j = 0; j < grid.rows; ++j) {
         for (int i = 0; i < grid.columns; ++i) {
@@ -87,7 +84,7 @@ Grid measure_cells(const AmplifierPlane& raw, const BiasLevels& bias, float satu
             const int step = std::max(1, static_cast<int>(std::sqrt(pixels / double(kCellSample))));
             sample_cell(raw, bias, saturation_adu, cell, step, sample);
             const double valid = double(sample.size()) * step * step / pixels;
-            grid.levels.push_back(valid < kLeastValid ? kNaN : cell_level(sample));
+            grid.levels.push_back(valid < kLeastValid ? kNaN : cell_level(sample, reach));
         }
     }
     return grid;
@@ -141,11 +138,12 @@ void replace_outliers(Grid& grid, double noise) {
     }
 }
 
-/// Calls use(tick, row) for about `sample` pixels spread over the plane, never the last tick.
+/// Calls use(tick, row) for about kNoiseSample pixels spread over the plane, row by row, never the
+/// last tick.
 template <typename Use>
-void for_sample(const AmplifierPlane& plane, int sample, const Use& use) {
+void for_sample(const AmplifierPlane& plane, const Use& use) {
     const double pixels = double(plane.ticks) * plane.rows;
-    const int step = std::max(1, static_cast<int>(std::sqrt(pixels / sample)));
+    const int step = std::max(1, static_cast<int>(std::sqrt(pixels / kNoiseSample)));
     for (int r = step / 2; r < plane.rows; r += step) {
         for (int t = (r / step) * 5 % step; t + 1 < plane.ticks; t += step) {
             use(t, r);
@@ -156,7 +154,7 @@ void for_sample(const AmplifierPlane& plane, int sample, const Use& use) {
 /// Noise from differences of horizontal neighbours, free of any structure that is smooth.
 double difference_noise(const AmplifierPlane& raw, float saturation_adu) {
     std::vector<float> sample;
-    for_sample(raw, kNoiseSample, [&](int t, int r) {
+    for_sample(raw, [&](int t, int r) {
         const float a = raw.at(t, r);
         const float b = raw.at(t + 1, r);
         if (a < saturation_adu && b < saturation_adu) {
@@ -169,10 +167,16 @@ double difference_noise(const AmplifierPlane& raw, float saturation_adu) {
 double mesh_noise(const AmplifierPlane& raw, const BiasLevels& bias, const SkyMesh& mesh,
                   float saturation_adu) {
     std::vector<float> sample;
-    for_sample(raw, kNoiseSample, [&](int t, int r) {
+    std::vector<float> pedestal(static_cast<std::size_t>(raw.ticks));
+    int filled = -1;
+    for_sample(raw, [&](int t, int r) {
+        if (r != filled) {
+            mesh.fill_row(r, pedestal.data());
+            filled = r;
+        }
         const float value = raw.at(t, r);
         if (value < saturation_adu) {
-            sample.push_back(value - bias.rows[r] - static_cast<float>(mesh.at(t, r)));
+            sample.push_back(value - bias.rows[r] - pedestal[t]);
         }
     });
     return sample.empty() ? 0.0 : clipped_normal(sample).scale;
@@ -181,7 +185,7 @@ double mesh_noise(const AmplifierPlane& raw, const BiasLevels& bias, const SkyMe
 bool is_constant(const AmplifierPlane& raw, float saturation_adu) {
     float low = std::numeric_limits<float>::infinity();
     float high = -low;
-    for_sample(raw, kNoiseSample, [&](int t, int r) {
+    for_sample(raw, [&](int t, int r) {
         const float value = raw.at(t, r);
         if (value < saturation_adu) {
             low = std::min(low, value);
@@ -239,7 +243,7 @@ double SkyMesh::mean() const {
 
 SkyLevels measure_sky(const AmplifierPlane& raw, const BiasLevels& bias, float saturation_adu) {
     const double from_differences = difference_noise(raw, saturation_adu);
-    Grid grid = measure_cells(raw, bias, saturation_adu);
+    Grid grid = measure_cells(raw, bias, saturation_adu, from_differences);
     replace_outliers(grid, from_differences);
     SkyLevels sky{SkyMesh(raw.ticks, raw.rows, grid.columns, grid.rows, std::move(grid.levels)),
                   0.0, is_constant(raw, saturation_adu)};

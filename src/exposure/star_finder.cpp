@@ -157,19 +157,21 @@ std::optional<WindowedMoments> moments(const AmplifierPlane& plane, const PixelN
         const double d = x0 + k - x;
         across[k] = static_cast<float>(std::exp(-0.5 * d * d / (sigma * sigma)));
     }
+    const auto sky_variance = static_cast<float>(noise.noise_adu * noise.noise_adu);
+    const auto per_gain = static_cast<float>(1.0 / noise.gain_e_per_adu);
+    const auto offset = static_cast<float>(x0 - x);
     double sum = 0.0, sum_x = 0.0, sum_y = 0.0, sum_rr = 0.0, variance = 0.0;
     for (int j = 0; j <= 2 * radius; ++j) {
         const float* row = plane.row(y0 + j) + x0;
         float s0 = 0.0F, s1 = 0.0F, s2 = 0.0F, v2 = 0.0F;
         for (int k = 0; k <= 2 * radius; ++k) {
-            const auto d = static_cast<float>(x0 + k - x);
+            const float d = offset + static_cast<float>(k);
             const float ws = across[k] * row[k];
             s0 += ws;
             s1 += ws * d;
             s2 += ws * d * d;
-            v2 += across[k] * across[k] * d * d *
-                  (static_cast<float>(noise.noise_adu * noise.noise_adu) +
-                   std::max(row[k], 0.0F) / static_cast<float>(noise.gain_e_per_adu));
+            v2 +=
+                across[k] * across[k] * d * d * (sky_variance + std::max(row[k], 0.0F) * per_gain);
         }
         const double dy = y0 + j - y;
         const double w = std::exp(-0.5 * dy * dy / (sigma * sigma));
@@ -247,8 +249,9 @@ bool is_isolated(const AmplifierPlane& plane, const PixelNoise& noise, const Sta
     const auto margin = static_cast<float>(kForeignSigma * noise.noise_adu);
     for (int r = static_cast<int>(star.row - outer); r <= star.row + outer; ++r) {
         for (int t = static_cast<int>(star.tick - outer); t <= star.tick + outer; ++t) {
-            const double distance = std::hypot(t - star.tick, r - star.row);
-            if (distance < inner || distance > outer || !plane.holds(t, r)) {
+            const double squared =
+                (t - star.tick) * (t - star.tick) + (r - star.row) * (r - star.row);
+            if (squared < inner * inner || squared > outer * outer || !plane.holds(t, r)) {
                 continue;
             }
             const int mirror_t = static_cast<int>(std::lround(2.0 * star.tick - t));
@@ -295,24 +298,24 @@ std::optional<ApertureSum> aperture_sum(const float* values, int width, int heig
     const double inner = kAnnulusInner * radius;
     ApertureSum sum;
     double weighted = 0.0;
+    int expected = 0;
     std::vector<float> annulus;
-    double expected = 0.0;
     for (int j = static_cast<int>(std::floor(y - outer)); j <= y + outer; ++j) {
         for (int i = static_cast<int>(std::floor(x - outer)); i <= x + outer; ++i) {
-            const double distance = std::hypot(i - x, j - y);
-            const double weight = std::clamp(radius + 0.5 - distance, 0.0, 1.0);
-            const bool in_annulus = distance >= inner && distance <= outer;
-            if (weight <= 0.0 && !in_annulus) {
+            const double squared = (i - x) * (i - x) + (j - y) * (j - y);
+            const bool in_annulus = squared >= inner * inner && squared <= outer * outer;
+            if (!in_annulus && squared >= (radius + 0.5) * (radius + 0.5)) {
                 continue;
             }
             const bool there = i >= 0 && j >= 0 && i < width && j < height;
             const float value = there ? values[static_cast<std::ptrdiff_t>(j) * width + i] : NAN;
             if (in_annulus) {
-                expected += 1.0;
+                ++expected;
                 if (std::isfinite(value)) {
                     annulus.push_back(value);
                 }
             } else if (std::isfinite(value)) {
+                const double weight = std::min(1.0, radius + 0.5 - std::sqrt(squared));
                 weighted += weight * value;
                 sum.area_px += weight;
             } else {

@@ -12,6 +12,7 @@
 #include "io/camera_detectors.h"
 #include "io/camera_tables.h"
 #include "io/files.h"
+#include "io/fits_section.h"
 #include "io/yaml.h"
 
 namespace straymark::io {
@@ -225,38 +226,11 @@ std::string without_placeholders(const YamlValue& value, const std::string& text
     return rest;
 }
 
-/// "[x1:x2,y1:y2]", spaces allowed; a reversed range means flipped.
-bool is_section(std::string_view text) {
-    std::string_view wanted = "[n:n,n:n]";
-    while (!text.empty() && !wanted.empty()) {
-        if (text.front() == ' ') {
-            text.remove_prefix(1);
-            continue;
-        }
-        if (wanted.front() == 'n') {
-            std::size_t digits = 0;
-            while (digits < text.size() && text[digits] >= '0' && text[digits] <= '9') {
-                ++digits;
-            }
-            if (digits == 0 || digits > 9) {
-                return false;
-            }
-            text.remove_prefix(digits);
-        } else if (text.front() == wanted.front()) {
-            text.remove_prefix(1);
-        } else {
-            return false;
-        }
-        wanted.remove_prefix(1);
-    }
-    return wanted.empty() && text.empty();
-}
-
 /// The name of a keyword that holds a section, or the section itself.
 std::string read_section_source(const YamlValue& value) {
     const std::string text = value.text(68);
     if (text.front() == '[') {
-        if (!is_section(text)) {
+        if (!parse_section(text)) {
             value.refuse("a section \"[x1:x2,y1:y2]\"");
         }
         return text;

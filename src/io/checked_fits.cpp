@@ -174,13 +174,14 @@ std::optional<std::string> CheckedFits::primary_text(const std::string& keyword)
     enter(0);
     verify(0);
     int status = 0;
-    std::array<char, FLEN_VALUE> value{};
-    if (fits_read_key(handle_->file, TSTRING, keyword.c_str(), value.data(), nullptr, &status) !=
-        0) {
+    char* value = nullptr;  // allocated by the library, for text may go on over many cards
+    if (fits_read_key_longstr(handle_->file, keyword.c_str(), &value, nullptr, &status) != 0) {
         fits_clear_errmsg();
         return std::nullopt;
     }
-    return std::string(value.data());
+    std::string text(value);
+    fits_free_memory(value, &status);
+    return text;
 }
 
 void CheckedFits::enter(int part) const {
@@ -336,21 +337,32 @@ std::vector<double> CheckedFits::number_column(int part, const std::string& name
     return cells;
 }
 
-std::vector<bool> CheckedFits::logical_column(int part, const std::string& name) const {
+std::vector<std::vector<float>> CheckedFits::array_column(int part, const std::string& name) const {
     const int column = column_of(part, name);
-    const std::int64_t rows = parts_[static_cast<std::size_t>(part)].rows;
-    std::vector<char> cells(static_cast<std::size_t>(rows));
+    std::vector<std::vector<float>> cells(
+        static_cast<std::size_t>(parts_[static_cast<std::size_t>(part)].rows));
     int status = 0;
-    int any_null = 0;
-    if (rows > 0) {
-        fits_read_col(handle_->file, TLOGICAL, column, 1, 1, rows, nullptr, cells.data(), &any_null,
-                      &status);
+    for (std::size_t row = 0; row < cells.size() && status == 0; ++row) {
+        LONGLONG length = 0;
+        LONGLONG offset = 0;
+        fits_read_descriptll(handle_->file, column, static_cast<LONGLONG>(row) + 1, &length,
+                             &offset, &status);
+        if (status == 0 && (length < 0 || length > bytes_)) {
+            refuse(place_of(part), fmt::format("an array of {} values in column {}", length, name),
+                   "arrays within the file", "make it again");
+        }
+        if (status == 0 && length > 0) {
+            cells[row].resize(static_cast<std::size_t>(length));
+            int any_null = 0;
+            fits_read_col(handle_->file, TFLOAT, column, static_cast<LONGLONG>(row) + 1, 1, length,
+                          nullptr, cells[row].data(), &any_null, &status);
+        }
     }
     if (status != 0) {
-        refuse(place_of(part), fits_message(status), fmt::format("logicals in column {}", name),
+        refuse(place_of(part), fits_message(status), fmt::format("arrays in column {}", name),
                "make it again");
     }
-    return {cells.begin(), cells.end()};
+    return cells;
 }
 
 }  // namespace straymark::io

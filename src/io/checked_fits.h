@@ -51,7 +51,9 @@ public:
     [[nodiscard]] std::vector<std::string> text_column(int part, const std::string& name) const;
     [[nodiscard]] std::vector<double> number_column(int part, const std::string& name,
                                                     bool allow_nan = false) const;
-    [[nodiscard]] std::vector<bool> logical_column(int part, const std::string& name) const;
+    /// Variable-length arrays of numbers.
+    [[nodiscard]] std::vector<std::vector<float>> array_column(int part,
+                                                               const std::string& name) const;
 
     /// Throws InputError about this file.
     [[noreturn]] void refuse(const std::string& place, const std::string& found,

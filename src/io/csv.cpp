@@ -1,12 +1,10 @@
 #include "io/csv.h"
 
 #include <algorithm>
-#include <array>
 #include <charconv>
 #include <cmath>
-#include <cstring>
 #include <fmt/format.h>
-#include <sys/stat.h>
+#include <span>
 
 #include "core/error.h"
 #include "io/files.h"
@@ -29,12 +27,7 @@ std::string_view trimmed(std::string_view text) {
 
 }  // namespace
 
-CsvReader::CsvReader(const std::string& path) : path_(path) {
-    { const InputFile regular_file_or_error(path); }
-    file_.reset(std::fopen(path.c_str(), "re"));
-    if (!file_) {
-        throw InputError({path, "", std::strerror(errno), "a file that can be read", ""});
-    }
+CsvReader::CsvReader(const std::string& path) : path_(path), file_(path) {
     if (!read_line()) {
         throw InputError({path_, "", "no header row", "a first line that names the columns", ""});
     }
@@ -69,24 +62,48 @@ int CsvReader::required_column(std::string_view name) const {
                       fmt::format("a column '{}'", name), ""});
 }
 
-bool CsvReader::read_line() {
-    std::array<char, 4096> part{};
-    do {
-        text_.clear();
-        while (std::fgets(part.data(), part.size(), file_.get()) != nullptr) {
-            text_ += part.data();
-            if (text_.size() > kLongestLine) {
-                throw InputError({path_, fmt::format("line {}", line_ + 1), "a line over 64 KiB",
-                                  "comma-separated text", ""});
+bool CsvReader::read_text_line() {
+    constexpr std::int64_t kBlock = 1 << 16;
+    text_.clear();
+    for (;;) {
+        if (at_ == block_.size()) {
+            block_.resize(static_cast<std::size_t>(std::min(kBlock, file_.size() - offset_)));
+            if (block_.empty()) {
+                return !text_.empty();
             }
-            if (text_.back() == '\n') {
-                break;
-            }
+            file_.read_at(offset_, std::as_writable_bytes(std::span(block_)));
+            offset_ += static_cast<std::int64_t>(block_.size());
+            at_ = 0;
         }
-        if (text_.empty()) {
+        const std::string_view rest(block_.data() + at_, block_.size() - at_);
+        const std::string_view part = rest.substr(0, rest.find('\n'));
+        const bool ended = part.size() < rest.size();
+        text_ += part;
+        at_ += part.size() + (ended ? 1 : 0);
+        if (text_.size() > kLongestLine) {
+            throw InputError({path_, fmt::format("line {}", line_ + 1), "a line over 64 KiB",
+                              "comma-separated text", ""});
+        }
+        if (ended) {
+            return true;
+        }
+    }
+}
+
+bool CsvReader::read_line() {
+    static constexpr std::string_view kByteOrderMark = "\xEF\xBB\xBF";
+    do {
+        if (!read_text_line()) {
             return false;
         }
+        if (line_ == 0 && text_.starts_with(kByteOrderMark)) {
+            text_.erase(0, kByteOrderMark.size());
+        }
         ++line_;
+        if (text_.find('\0') != std::string::npos) {
+            throw InputError({path_, fmt::format("line {}", line_), "a byte of value zero",
+                              "comma-separated text", ""});
+        }
     } while (trimmed(text_).empty() || text_.front() == '#');
     return true;
 }

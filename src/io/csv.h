@@ -1,11 +1,12 @@
 #pragma once
 
-#include <cstdio>
-#include <memory>
+#include <cstdint>
 #include <optional>
 #include <string>
 #include <string_view>
 #include <vector>
+
+#include "io/files.h"
 
 namespace straymark::io {
 
@@ -26,7 +27,8 @@ public:
     /// Index of a column that must exist; the error lists those there.
     [[nodiscard]] int required_column(std::string_view name) const;
 
-    /// The next row; false at the end. Throws InputError where a row has another number of fields.
+    /// The next row; false at the end. Throws InputError where a row has another number of fields,
+    /// or a byte of value zero.
     bool next();
     [[nodiscard]] std::string_view field(int column) const;
     /// A finite number. Throws InputError naming line and column.
@@ -38,13 +40,14 @@ public:
 
 private:
     bool read_line();
+    bool read_text_line();
     void split();
 
     std::string path_;
-    struct Closer {
-        void operator()(std::FILE* file) const { std::fclose(file); }
-    };
-    std::unique_ptr<std::FILE, Closer> file_;
+    InputFile file_;
+    std::int64_t offset_ = 0;  ///< in the file, of the end of `block_`
+    std::vector<char> block_;
+    std::size_t at_ = 0;  ///< in `block_`
     std::vector<std::string> columns_;
     std::string text_;                 ///< of the current line
     std::vector<std::string> fields_;  ///< reused

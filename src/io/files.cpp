@@ -145,9 +145,12 @@ OutputFile::OutputFile(std::string path) : path_(std::move(path)) {
                        fmt::format(".{}.{}-{}.partial", final_path.filename().string(), ::getpid(),
                                    serial.fetch_add(1)))
                           .string();
+    check(true, FileOperation::create, path_, "create");
     handle_ = FileHandle(
         ::open(temporary_path_.c_str(), O_RDWR | O_CREAT | O_EXCL | O_CLOEXEC | O_NOFOLLOW, 0644));
-    check(handle_.get() >= 0, FileOperation::create, path_, "create");
+    if (handle_.get() < 0) {
+        throw SystemError(path_, "create", errno);
+    }
 }
 
 OutputFile::~OutputFile() {

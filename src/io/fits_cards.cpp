@@ -4,6 +4,7 @@
 #include <cassert>
 #include <charconv>
 #include <cmath>
+#include <fmt/format.h>
 #include <utility>
 
 namespace straymark::io {
@@ -100,6 +101,10 @@ std::string printable(std::string_view text) {
         shown += "...";
     }
     return shown;
+}
+
+std::string quoted(std::string_view text) {
+    return fmt::format("'{}'", printable(text));
 }
 
 std::optional<std::int64_t> CardValue::integer() const {

@@ -50,6 +50,8 @@ std::optional<CardValue> card_value(std::string_view card);
 /// Text from a file made fit for a message: control and non-ASCII bytes become '?', long text is
 /// cut with "...".
 std::string printable(std::string_view text);
+/// The same between quotes.
+std::string quoted(std::string_view text);
 /// ASCII letters only.
 std::string upper_case(std::string_view text);
 std::string_view trimmed(std::string_view text);

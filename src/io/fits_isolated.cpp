@@ -148,6 +148,18 @@ FileHandle shared_memory(std::int64_t bytes, const std::string& path) {
     return above_standard(memory.get(), path);
 }
 
+/// PLIO_1 is left out: it is for masks, not exposures, and overruns the library's memory when
+/// damaged, often without a trace.
+void check_compression(const InputFile& file, const FitsHdu& hdu) {
+    constexpr std::array<std::string_view, 6> kKnown{"RICE_1", "RICE_ONE",    "GZIP_1",
+                                                     "GZIP_2", "HCOMPRESS_1", "NOCOMPRESS"};
+    if (std::find(kKnown.begin(), kKnown.end(), hdu.compression) == kKnown.end()) {
+        throw InputError({file.path(), place_of(hdu) + ", keyword ZCMPTYPE",
+                          quoted(hdu.compression), "RICE_1, GZIP_1, GZIP_2 or HCOMPRESS_1",
+                          "exposures are not read from this compression; expand the file"});
+    }
+}
+
 void verify_data_sum(const InputFile& file, const FitsHdu& hdu) {
     if (!hdu.data_sum) {
         return;
@@ -281,6 +293,7 @@ void DecodedImage::read(const PixelBox& box, std::span<float> out) const {
 
 DecodedImage decode_isolated(const InputFile& file, const FitsHdu& hdu,
                              const std::string& program) {
+    check_compression(file, hdu);
     verify_data_sum(file, hdu);
     const std::int64_t pixels = hdu.axes[0] * hdu.axes[1];
     const Request request{hdu.header_offset, hdu.data_offset + hdu.data_bytes - hdu.header_offset,

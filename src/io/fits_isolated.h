@@ -31,9 +31,10 @@ private:
     int width_, height_;
 };
 
-/// Decodes one compressed two-dimensional image. Its DATASUM is verified first, where it has one.
-/// program: that runs isolated_decode_main. Throws InputError ("this file is corrupt") where the
-/// sum differs, or the child fails, dies or does not end in time. Thread-safe.
+/// Decodes one compressed two-dimensional image (RICE_1, GZIP_1, GZIP_2, HCOMPRESS_1). Its DATASUM
+/// is verified first, where it has one. program: that runs isolated_decode_main. Throws InputError
+/// ("this file is corrupt") where the sum differs, or the child fails, dies or does not end in
+/// time. Thread-safe.
 DecodedImage decode_isolated(const InputFile& file, const FitsHdu& hdu, const std::string& program);
 
 /// The child's side: main of a program whose first argument is kDecodeArgument. Returns its exit

@@ -39,7 +39,7 @@ public:
         }
         const std::optional<std::int64_t> number = value ? value->integer() : std::nullopt;
         if (!number || *number < low || *number > high) {
-            refuse(keyword, value ? "'" + printable(value->text) + "'" : "no such card",
+            refuse(keyword, value ? quoted(value->text) : "no such card",
                    fmt::format("an integer from {} to {}", low, high));
         }
         return *number;
@@ -51,7 +51,7 @@ public:
         }
         const std::optional<double> number = value->number();
         if (!number) {
-            refuse(keyword, "'" + printable(value->text) + "'", "a number");
+            refuse(keyword, quoted(value->text), "a number");
         }
         return *number;
     }
@@ -182,11 +182,11 @@ void check_start(const InputFile& file) {
         file.read_at(0, std::as_writable_bytes(std::span(start)));
     }
     if (start != kStart) {
-        throw InputError({file.path(), "byte 0",
-                          file.size() < kFitsBlockBytes ? fmt::format("{} bytes", file.size())
-                                                        : "'" + printable(start) + "'",
-                          "a FITS file, which begins with 'SIMPLE  =' and has 2880 bytes or more",
-                          "give a raw exposure in FITS"});
+        throw InputError(
+            {file.path(), "byte 0",
+             file.size() < kFitsBlockBytes ? fmt::format("{} bytes", file.size()) : quoted(start),
+             "a FITS file, which begins with 'SIMPLE  =' and has 2880 bytes or more",
+             "give a raw exposure in FITS"});
     }
 }
 
@@ -243,6 +243,8 @@ FitsHdu described_hdu(const FitsHeader& header, bool primary, const std::string&
         hdu.bitpix = view.bitpix("ZBITPIX");
         hdu.axes = image_axes(view.axes("ZNAXIS"));
         hdu.was_primary = header.find("ZSIMPLE").has_value();
+        const std::optional<CardValue> compression = header.find("ZCMPTYPE");
+        hdu.compression = compression ? trimmed(compression->text) : std::string_view("not stated");
         if (upper_case(hdu.name) == "COMPRESSED_IMAGE") {
             hdu.name.clear();  // what compression calls an image that had no name
         }
@@ -267,8 +269,8 @@ FitsStructure scan_fits(const InputFile& file) {
         std::int64_t cards = 0;
         const FitsHeader header = header_at(file, offset, place, cards);
         if (number > 0 && !is_xtension(header.card(0))) {
-            throw InputError({file.path(), place, "'" + printable(header.card(0)) + "'",
-                              "a card XTENSION", "the header is damaged; fetch the file again"});
+            throw InputError({file.path(), place, quoted(header.card(0)), "a card XTENSION",
+                              "the header is damaged; fetch the file again"});
         }
         FitsHdu hdu = described_hdu(header, number == 0, file.path(), place);
         hdu.number = number;

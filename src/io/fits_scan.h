@@ -31,6 +31,7 @@ struct FitsHdu {
     double zero = 0.0;   ///< BZERO
     std::optional<std::int64_t> blank;
     std::optional<std::uint32_t> data_sum;  ///< DATASUM
+    std::string compression;                ///< ZCMPTYPE; empty: not compressed
     std::int64_t header_offset = 0;
     std::int64_t header_cards = 0;  ///< END included
     std::int64_t data_offset = 0;

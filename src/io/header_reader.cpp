@@ -61,7 +61,7 @@ public:
     }
     [[noreturn]] void refuse(const FoundCard& card, const std::string& expected,
                              const std::string& advice = {}) const {
-        throw InputError({file_, card.place, "'" + printable(card.value.text) + "'", expected,
+        throw InputError({file_, card.place, quoted(card.value.text), expected,
                           advice.empty() ? "correct the header, or name another keyword in "
                                            "`headers` of the camera file"
                                          : advice});
@@ -104,7 +104,7 @@ TimeScale Headers::time_scale(const FoundCard& card) const {
         return TimeScale::tt;
     }
     throw InputError({file_, headers_[where].place + ", keyword TIMESYS",
-                      "'" + printable(value->text) + "'", "UTC, TAI or TT",
+                      quoted(value->text), "UTC, TAI or TT",
                       "times on other scales are not read; convert them"});
 }
 

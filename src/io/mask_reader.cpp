@@ -1,5 +1,6 @@
 #include "io/mask_reader.h"
 
+#include <algorithm>
 #include <cmath>
 #include <cstddef>
 #include <fmt/format.h>
@@ -39,23 +40,26 @@ public:
     TableRows& fill(const std::string& name, Integer Row::*member) {
         const std::vector<double> cells = file_.number_column(part_, name);
         for (std::size_t i = 0; i < rows_.size(); ++i) {
-            rows_[i].*member = static_cast<Integer>(whole(cells[i], name, i));
+            rows_[i].*member = static_cast<Integer>(
+                whole(cells[i], static_cast<double>(std::numeric_limits<Integer>::max()), name, i));
         }
         return *this;
     }
-    TableRows& fill(const std::string& name, bool Row::*member) {
-        const std::vector<bool> cells = file_.logical_column(part_, name);
+    TableRows& fill(const std::string& name, std::vector<float> Row::*member) {
+        std::vector<std::vector<float>> cells = file_.array_column(part_, name);
         for (std::size_t i = 0; i < rows_.size(); ++i) {
-            rows_[i].*member = cells[i];
+            rows_[i].*member = std::move(cells[i]);
         }
         return *this;
     }
     std::vector<Row> take() { return std::move(rows_); }
 
 private:
-    /// Pixels, counts and bit values: all fit in 32 bits.
-    [[nodiscard]] double whole(double cell, const std::string& name, std::size_t row) const {
-        if (std::abs(cell) > std::numeric_limits<std::int32_t>::max() || cell != std::floor(cell)) {
+    /// Numbers are read as doubles, which are exact up to 2^53.
+    [[nodiscard]] double whole(double cell, double largest, const std::string& name,
+                               std::size_t row) const {
+        constexpr double kExact = 9007199254740992.0;
+        if (std::abs(cell) > std::min(largest, kExact) || cell != std::floor(cell)) {
             file_.refuse(fmt::format("{}, row {}, column {}", table_, row + 1, name),
                          fmt::format("{}", cell), "a whole number", "make the mask again");
         }
@@ -131,6 +135,7 @@ std::vector<MarkRow> MaskFile::marks() const {
         .fill("strength_e", &MarkRow::strength_e)
         .fill("error_e", &MarkRow::error_e)
         .fill("peak_e", &MarkRow::peak_e, true)
+        .fill("peak_e", &MarkRow::peak_e)
         .fill("response", &MarkRow::response)
         .fill("response_error", &MarkRow::response_error)
         .fill("significance", &MarkRow::significance, true)

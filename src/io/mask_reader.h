@@ -39,6 +39,7 @@ public:
     [[nodiscard]] std::map<std::string, std::int32_t> bit_values() const;
     [[nodiscard]] std::vector<MarkRow> marks() const;
     [[nodiscard]] std::vector<DetectionRow> detection() const;
+    [[nodiscard]] std::vector<PsfRow> psfs() const;
     [[nodiscard]] std::vector<AssessedRow> assessed() const;
     /// Of the detection that the mask was made for; nothing where DETECTION has no row.
     [[nodiscard]] std::optional<int> background_px() const;

@@ -188,7 +188,7 @@ std::optional<Placer::NamedSection> Placer::section(const Source& source,
     if (entry->starts_with('[')) {
         const std::optional<FitsSection> literal = parse_section(*entry);
         if (!literal) {
-            refuse("`raw` of the camera file", "'" + printable(*entry) + "'",
+            refuse("`raw` of the camera file", quoted(*entry),
                    "a section [x1:x2,y1:y2]", "correct the camera file");
         }
         return NamedSection{*literal, source.place + ", section of the camera file"};
@@ -205,7 +205,7 @@ std::optional<Placer::NamedSection> Placer::section(const Source& source,
     const std::optional<FitsSection> found =
         value->closed ? parse_section(value->text) : std::nullopt;
     if (!found) {
-        refuse(place, "'" + printable(value->text) + "'", "a section [x1:x2,y1:y2]",
+        refuse(place, quoted(value->text), "a section [x1:x2,y1:y2]",
                "correct the header, or give the section in `raw` of the camera file");
     }
     return NamedSection{*found, place};

@@ -32,7 +32,7 @@ std::vector<PixelRun> dilated(const std::vector<PixelRun>& runs, double radius,
     for (const PixelRun& run : runs) {
         for (int dy = -reach; dy <= reach; ++dy) {
             const int y = run.y + dy;
-            if (y < bounds.y0 || y >= bounds.y1) {
+            if (run.length <= 0 || y < bounds.y0 || y >= bounds.y1) {
                 continue;
             }
             const int half_chord =

@@ -33,8 +33,8 @@ void add_figures(const NightScore& night, std::string& text) {
     text += fmt::format("{}: masks of {} exposures against the truth\n\n", night.kind,
                         night.exposures.size());
     for (const Figure& figure : night.figures) {
-        text += fmt::format("  {:<8} {:<22} {:<30} {}\n", figure.met ? "met" : "NOT MET",
-                            figure.shown, figure.target, figure.text);
+        text += fmt::format("  {:<8} {:<20} {} ({})\n", figure.met ? "met" : "NOT MET",
+                            figure.shown, figure.text, figure.target);
         const std::size_t shown = std::min(figure.offenders.size(), kMostOffendersShown);
         for (std::size_t i = 0; i < shown; ++i) {
             text += fmt::format("           {}\n", figure.offenders[i]);

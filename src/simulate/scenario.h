@@ -179,7 +179,6 @@ struct SeeingPlan {
 struct Scenario {
     std::string path;
     std::string name;  ///< of the camera
-    std::string text;  ///< the file itself, kept with what is made from it
     std::uint64_t seed = 0;
     SitePlan site;
     TelescopePlan telescope;

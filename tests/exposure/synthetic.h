@@ -92,7 +92,7 @@ inline Camera make_camera(int width, int height, int columns, int rows,
         for (int i = 0; i < columns; ++i) {
             Amplifier amplifier;
             const int k = j * columns + i;
-            amplifier.id = "a" + std::to_string(k + 1);
+            amplifier.id = std::to_string(k + 1);
             amplifier.readout = ReadoutGeometry(
                 {width * i / columns, height * j / rows, width * (i + 1) / columns,
                  height * (j + 1) / rows},

@@ -13,7 +13,8 @@ namespace straymark::test {
 class TemporaryFolder {
 public:
     TemporaryFolder() {
-        std::string pattern = (std::filesystem::temp_directory_path() / "straymark-XXXXXX").string();
+        std::string pattern =
+            (std::filesystem::temp_directory_path() / "straymark-XXXXXX").string();
         REQUIRE(::mkdtemp(pattern.data()) != nullptr);
         path_ = pattern;
     }
