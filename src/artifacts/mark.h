@@ -75,6 +75,8 @@ public:
     FaintSum(const FaintSum&) = delete;
     FaintSum& operator=(const FaintSum&) = delete;
     [[nodiscard]] virtual std::int64_t count() const = 0;
+    /// Does it hold anything unmeasured? If not, add_to leaves those windows alone.
+    [[nodiscard]] virtual bool any_unmeasured() const = 0;
     virtual void add_to(const FaintWindows& windows) const = 0;  ///< thread-safe
 };
 
@@ -90,7 +92,8 @@ struct Assessment {
     AssessmentState state = AssessmentState::off;
     std::string reason;       ///< why off, partly or not
     std::string calibration;  ///< product used
-    double truncation_response = 0.0;  ///< what was left out of the sum could respond with this at most
+    double truncation_response =
+        0.0;  ///< what was left out of the sum could respond with this at most
 };
 
 /// All that one predictor says about one detector.

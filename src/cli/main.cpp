@@ -1,6 +1,7 @@
 #include <cstdio>
 #include <exception>
 #include <new>
+#include <string_view>
 
 #include "cli/command.h"
 #include "core/error.h"
@@ -19,7 +20,6 @@ int run(int argc, char** argv) {
     line.app.name("straymark");
     line.app.require_subcommand(1);
     line.app.set_version_flag("--version", "straymark " STRAYMARK_VERSION);
-    add_simulate(line);
     add_check(line);
     add_stars(line);
     add_build(line);
@@ -37,6 +37,9 @@ int run(int argc, char** argv) {
 
 int main(int argc, char** argv) {
     try {
+        if (argc > 1 && std::string_view(argv[1]) == io::kDecodeArgument) {
+            return io::isolated_decode_main(argc, argv);
+        }
         return run(argc, argv);
     } catch (const UsageError& error) {
         complain(error.what());

@@ -18,7 +18,7 @@ OpenSite::OpenSite(const std::string& site_file) : site_(io::load_site(site_file
     }
     raw_ = io::make_raw_reader(site_.camera);
     calibrations_ = std::make_unique<io::CalibrationFolder>(site_.calibrations_path);
-    digests_ = io::make_digest_store(site_.digests_path);
+    digests_ = std::make_unique<io::DigestFolder>(site_.digests_path);
     masks_ = std::make_unique<io::MaskFolder>(site_.masks_path);
 }
 

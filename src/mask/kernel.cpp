@@ -1,46 +1,100 @@
 #include "mask/kernel.h"
 
 #include <algorithm>
+#include <array>
 #include <cassert>
 #include <cmath>
+#include <limits>
 
 namespace straymark {
 namespace {
 
-/// out[q + e] += in[q] * kernel[e] for every |in[q]| >= cut; out is in grown by the radius. Sums
-/// run in the order of q, so no vector width and no tiling changes a bit.
+constexpr int kLanes = 16;  ///< rows of weights are padded to whole groups of this many
+
+int padded(int side) {
+    return (side + kLanes - 1) / kLanes * kLanes;
+}
+
+/// One copy of a hot loop for each width of vectors. All of them do the same additions in the same
+/// order (no contraction, no reduction), so no machine changes a bit.
 #if defined(__x86_64__) && defined(__GNUC__) && !defined(__clang__) && \
     !defined(__SANITIZE_THREAD__) && !defined(__SANITIZE_ADDRESS__)
-__attribute__((target_clones("avx2", "default")))
+#define STRAYMARK_EACH_VECTOR_WIDTH __attribute__((target_clones("avx512f", "avx2", "default")))
+#else
+#define STRAYMARK_EACH_VECTOR_WIDTH
 #endif
-void scatter(const float* in, int width, int height, float cut, const float* kernel, int side,
-             float* out, int out_width) {
+
+/// Does any of `count` values reach the cut in magnitude?
+STRAYMARK_EACH_VECTOR_WIDTH
+bool any_reaches(const float* values, int count, float cut) {
+    unsigned reached = 0;
+    for (int i = 0; i < count; ++i) {
+        reached |= std::fabs(values[i]) >= cut ? 1U : 0U;
+    }
+    return reached != 0;
+}
+
+/// out[q + e] += value * weights[e] for one source pixel q; rows of weights are padded with zeros.
+STRAYMARK_EACH_VECTOR_WIDTH
+void scatter_one(float value, const float* weights, int side, int stride, float* out,
+                 int out_width) {
+    for (int ky = 0; ky < side; ++ky) {
+        float* to = out + static_cast<std::ptrdiff_t>(ky) * out_width;
+        const float* row = weights + static_cast<std::ptrdiff_t>(ky) * stride;
+        for (int group = 0; group < stride; group += kLanes) {
+            for (int k = 0; k < kLanes; ++k) {
+                to[group + k] += value * row[group + k];
+            }
+        }
+    }
+}
+
+/// Scatters every pixel with |in| >= cut, row by row.
+void scatter(const float* in, int width, int height, float cut, const float* weights, int side,
+             int stride, float* out, int out_width) {
+    constexpr int kStretch = 32;
+    const float least = std::max(cut, std::numeric_limits<float>::min());
     for (int y = 0; y < height; ++y) {
-        for (int x = 0; x < width; ++x) {
-            const float value = in[static_cast<std::ptrdiff_t>(y) * width + x];
-            if (!(std::fabs(value) >= cut) || value == 0.0F) {
+        const float* row = in + static_cast<std::ptrdiff_t>(y) * width;
+        for (int x0 = 0; x0 < width; x0 += kStretch) {
+            const int x1 = std::min(x0 + kStretch, width);
+            if (!any_reaches(row + x0, x1 - x0, least)) {
                 continue;
             }
-            for (int ky = 0; ky < side; ++ky) {
-                float* to = out + static_cast<std::ptrdiff_t>(y + ky) * out_width + x;
-                const float* row = kernel + static_cast<std::ptrdiff_t>(ky) * side;
-                for (int kx = 0; kx < side; ++kx) {
-                    to[kx] += value * row[kx];
+            for (int x = x0; x < x1; ++x) {
+                if (std::fabs(row[x]) >= least) {
+                    scatter_one(row[x], weights, side, stride,
+                                out + static_cast<std::ptrdiff_t>(y) * out_width + x, out_width);
                 }
             }
         }
     }
 }
 
+/// sums[k] += values[k] * weights[k]
+STRAYMARK_EACH_VECTOR_WIDTH
+void accumulate(float* sums, const float* values, const float* weights, int count) {
+    for (int k = 0; k < count; ++k) {
+        sums[k] += values[k] * weights[k];
+    }
+}
+
 }  // namespace
 
 DetectionKernel::DetectionKernel(const Psf& psf, int background_px)
-    : radius_(psf.radius),
-      background_px_(background_px),
-      psf_(psf.values),
-      turned_(psf.values.rbegin(), psf.values.rend()) {
+    : radius_(psf.radius), background_px_(background_px), psf_(psf.values) {
+    const int side = 2 * radius_ + 1;
     assert(psf.source != PsfSource::none);
-    assert(psf_.size() == static_cast<std::size_t>((2 * radius_ + 1) * (2 * radius_ + 1)));
+    assert(psf_.size() == static_cast<std::size_t>(side) * static_cast<std::size_t>(side));
+    stride_ = padded(side);
+    turned_.assign(static_cast<std::size_t>(side) * static_cast<std::size_t>(stride_), 0.0F);
+    for (int y = 0; y < side; ++y) {
+        for (int x = 0; x < side; ++x) {
+            turned_[static_cast<std::size_t>(y) * static_cast<std::size_t>(stride_) +
+                    static_cast<std::size_t>(x)] =
+                psf_[psf_.size() - 1 - static_cast<std::size_t>(y * side + x)];
+        }
+    }
     double sum_square = 0.0;
     for (const float value : psf_) {
         sum_square += static_cast<double>(value) * static_cast<double>(value);
@@ -74,17 +128,18 @@ void DetectionKernel::answer_bound(const SignalWindow& in, float cut, const Sign
 
 void DetectionKernel::answer_psf(const SignalWindow& in, float cut, const SignalWindow& out,
                                  std::vector<float>& scratch) const {
-    const PixelBox padded = in.box.grown(radius_);
+    const PixelBox reached = in.box.grown(radius_);
     const int side = 2 * radius_ + 1;
-    scratch.assign(
-        static_cast<std::size_t>(padded.width()) * static_cast<std::size_t>(padded.height()), 0.0F);
-    scatter(in.values.data(), in.box.width(), in.box.height(), cut, turned_.data(), side,
-            scratch.data(), padded.width());
-    const PixelBox shared = out.box.intersected(padded);
+    const int width = reached.width() + (stride_ - side);  // padding writes zeros beyond the end
+    scratch.assign(static_cast<std::size_t>(width) * static_cast<std::size_t>(reached.height()),
+                   0.0F);
+    scatter(in.values.data(), in.box.width(), in.box.height(), cut, turned_.data(), side, stride_,
+            scratch.data(), width);
+    const PixelBox shared = out.box.intersected(reached);
     std::fill(out.values.begin(), out.values.end(), 0.0F);
     for (int y = shared.y0; y < shared.y1; ++y) {
         const auto from =
-            static_cast<std::ptrdiff_t>(y - padded.y0) * padded.width() + (shared.x0 - padded.x0);
+            static_cast<std::ptrdiff_t>(y - reached.y0) * width + (shared.x0 - reached.x0);
         const auto to = static_cast<std::ptrdiff_t>(y - out.box.y0) * out.box.width() +
                         (shared.x0 - out.box.x0);
         std::copy_n(scratch.begin() + from, shared.width(), out.values.begin() + to);
@@ -138,16 +193,20 @@ double DetectionKernel::answer_at(const SignalWindow& in, int x, int y) const {
     };
     const PixelBox near =
         PixelBox{x - radius_, y - radius_, x + radius_ + 1, y + radius_ + 1}.intersected(in.box);
-    double sum = 0.0;
+    // Column by column, then across: an order of additions that vectors keep.
+    constexpr int kWidest = 4 * kLanes + 1;
+    std::array<float, kWidest> columns{};
+    const int width = std::max(near.width(), 0);
+    assert(width <= kWidest);
     for (int qy = near.y0; qy < near.y1; ++qy) {
-        const float* row = row_of(qy);
-        const float* weights =
-            psf_.data() + static_cast<std::ptrdiff_t>(qy - y + radius_) * side + (radius_ - x);
-        float row_sum = 0.0F;
-        for (int qx = near.x0; qx < near.x1; ++qx) {
-            row_sum += row[qx] * weights[qx];
-        }
-        sum += static_cast<double>(row_sum);
+        accumulate(columns.data(), row_of(qy) + near.x0,
+                   psf_.data() + static_cast<std::ptrdiff_t>(qy - y + radius_) * side +
+                       (near.x0 - x + radius_),
+                   width);
+    }
+    double sum = 0.0;
+    for (int k = 0; k < width; ++k) {
+        sum += static_cast<double>(columns[static_cast<std::size_t>(k)]);
     }
     if (background_px_ > 0) {
         const PixelBox box =

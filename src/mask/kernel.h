@@ -42,14 +42,15 @@ private:
                     std::vector<float>& scratch) const;
     void add_box(const SignalWindow& in, float sign, const SignalWindow& out) const;
 
-    int radius_ = 0;
+    int radius_ = 0;  ///< at most 32
+    int stride_ = 0;  ///< of a row of turned_, padded with zeros
     int background_px_ = 0;
     int box_below_ = 0, box_above_ = -1;  ///< offsets covered by the box: -box_below .. box_above
     int halo_ = 0;
     double root_sum_square_ = 0.0;
     double weight_sum_ = 0.0;
     std::vector<float> psf_;     ///< P, row-major about its centre
-    std::vector<float> turned_;  ///< P turned by 180 degrees, for scattering
+    std::vector<float> turned_;  ///< P turned by 180 degrees, rows padded, for scattering
 };
 
 }  // namespace straymark

@@ -23,20 +23,22 @@ std::size_t area(const PixelBox& box) {
 TileWorker::TileWorker(const DetectionKernel& kernel, PixelBox whole, std::vector<NoisePatch> noise)
     : kernel_(kernel), whole_(whole), noise_(std::move(noise)) {}
 
-void TileWorker::reset(const PixelBox& tile) {
+void TileWorker::reset(const PixelBox& tile, bool any_unmeasured) {
     tile_ = tile;
     reach_ = tile.grown(kernel_.halo()).intersected(whole_);
+    any_unmeasured_ = any_unmeasured;
     for (Layer* layer :
-         {&measured_, &unmeasured_, &measured_faint_, &unmeasured_faint_, &spread_}) {
-        layer->signal.assign(area(reach_), 0.0F);
-        layer->answer.resize(area(tile_));
+         {&measured_, &measured_faint_, &spread_, &unmeasured_, &unmeasured_faint_}) {
+        if (any_unmeasured_ || (layer != &unmeasured_ && layer != &unmeasured_faint_)) {
+            layer->signal.assign(area(reach_), 0.0F);
+            layer->answer.resize(area(tile_));
+        }
         layer->in = {reach_, layer->signal};
         layer->out = {tile_, layer->answer};
     }
     pool_.clear();
     rendered_.clear();
     modes_.clear();
-    any_unmeasured_ = false;
 }
 
 SignalWindow TileWorker::window(const Rendered& rendered) const {
@@ -76,7 +78,6 @@ void TileWorker::render_marks(std::span<const Mark* const> marks) {
             signal = render(*mark->signal);
             add(rendered_[signal], mark->measured ? measured_ : unmeasured_, 1.0F, false);
         }
-        any_unmeasured_ = any_unmeasured_ || !mark->measured;
         for (const ErrorMode& mode : mark->errors) {
             const double relative = mode.shape ? 1.0 : mode.relative;
             const std::size_t shape = mode.shape ? render(*mode.shape) : signal;
@@ -87,16 +88,17 @@ void TileWorker::render_marks(std::span<const Mark* const> marks) {
 }
 
 bool TileWorker::could_matter(double threshold, double quietest_noise_e) const {
-    const double limit = threshold / (kernel_.scale(quietest_noise_e) * kernel_.weight_sum());
-    const auto bound = static_cast<float>(limit);
+    const auto bound =
+        static_cast<float>(threshold / (kernel_.scale(quietest_noise_e) * kernel_.weight_sum()));
+    unsigned reached = 0;
     for (std::size_t i = 0; i < spread_.signal.size(); ++i) {
-        if (std::fabs(measured_.signal[i]) + std::fabs(unmeasured_.signal[i]) +
-                2.0F * spread_.signal[i] >=
-            bound) {
-            return true;
+        float most = std::fabs(measured_.signal[i]) + 2.0F * spread_.signal[i];
+        if (any_unmeasured_) {
+            most += std::fabs(unmeasured_.signal[i]);
         }
+        reached |= most >= bound ? 1U : 0U;
     }
-    return false;
+    return reached != 0;
 }
 
 std::pair<double, double> TileWorker::variances_at(int x, int y) const {
@@ -155,13 +157,16 @@ TileWorker::Decision TileWorker::decide_exactly(int x, int y, double scale,
 
 void TileWorker::add_faint(const FaintSum& faint) {
     faint.add_to({measured_.in, unmeasured_.in, measured_faint_.in, unmeasured_faint_.in});
-    for (std::size_t i = 0; i < spread_.signal.size(); ++i) {
-        // The windows were filled with variances.
-        measured_faint_.signal[i] = std::sqrt(measured_faint_.signal[i]);
-        unmeasured_faint_.signal[i] = std::sqrt(unmeasured_faint_.signal[i]);
-        spread_.signal[i] += measured_faint_.signal[i] + unmeasured_faint_.signal[i];
-        any_unmeasured_ =
-            any_unmeasured_ || unmeasured_faint_.signal[i] != 0.0F || unmeasured_.signal[i] != 0.0F;
+    // The faint windows were filled with variances.
+    const auto fold = [this](std::vector<float>& variances) {
+        for (std::size_t i = 0; i < spread_.signal.size(); ++i) {
+            variances[i] = std::sqrt(variances[i]);
+            spread_.signal[i] += variances[i];
+        }
+    };
+    fold(measured_faint_.signal);
+    if (any_unmeasured_) {
+        fold(unmeasured_faint_.signal);
     }
 }
 
@@ -184,6 +189,27 @@ void TileWorker::answer_all(double threshold, double quietest_noise_e) {
         kernel_.answer(unmeasured_.in, signal_cut, unmeasured_.out, scratch_);
     }
     kernel_.answer_bound(spread_.in, spread_cut, spread_.out, scratch_);
+}
+
+bool TileWorker::row_could_matter(const PixelBox& part, int y, double scale,
+                                  double threshold) const {
+    const auto first =
+        static_cast<std::size_t>(y - tile_.y0) * static_cast<std::size_t>(tile_.width()) +
+        static_cast<std::size_t>(part.x0 - tile_.x0);
+    // Below this, signal and errors with all that their cuts left out miss the threshold.
+    const auto limit = static_cast<float>(
+        threshold * (1.0 - (any_unmeasured_ ? 2.0 : 1.0) * kSignalSlack - 2.0 * kSpreadSlack) /
+        scale);
+    const auto count = static_cast<std::size_t>(part.width());
+    unsigned reached = 0;
+    for (std::size_t i = first; i < first + count; ++i) {
+        float most = std::fabs(measured_.answer[i]) + 2.0F * spread_.answer[i];
+        if (any_unmeasured_) {
+            most += std::fabs(unmeasured_.answer[i]);
+        }
+        reached |= most >= limit ? 1U : 0U;
+    }
+    return reached != 0;
 }
 
 TileWorker::Decision TileWorker::decide_pixel(int x, int y, double scale, double threshold) const {
@@ -215,6 +241,9 @@ TileCounts TileWorker::paint_patch(const NoisePatch& patch, double threshold, Ar
     }
     const double scale = kernel_.scale(patch.noise_e);
     for (int y = part.y0; y < part.y1; ++y) {
+        if (!row_could_matter(part, y, scale, threshold)) {
+            continue;
+        }
         for (int x = part.x0; x < part.x1; ++x) {
             const Decision decision = decide_pixel(x, y, scale, threshold);
             MaskPixel set = 0;
@@ -248,7 +277,10 @@ TileCounts TileWorker::paint(const PixelBox& tile, std::span<const Mark* const> 
     if (marks.empty() && faint == nullptr) {
         return counts;
     }
-    reset(tile);
+    const bool unmeasured =
+        (faint != nullptr && faint->any_unmeasured()) ||
+        std::any_of(marks.begin(), marks.end(), [](const Mark* mark) { return !mark->measured; });
+    reset(tile, unmeasured);
     const double quietest = quietest_noise();
     if (quietest == 0.0) {
         return counts;

@@ -63,7 +63,7 @@ private:
         bool flagged = false, negative = false, marginal = false, unassessed = false;
     };
 
-    void reset(const PixelBox& tile);
+    void reset(const PixelBox& tile, bool any_unmeasured);
     void add_faint(const FaintSum& faint);
     void render_marks(std::span<const Mark* const> marks);
     std::size_t render(const SignalShape& shape);
@@ -73,6 +73,8 @@ private:
     void answer_all(double threshold, double quietest_noise_e);
     TileCounts paint_patch(const NoisePatch& patch, double threshold, ArtifactBits bits,
                            std::span<MaskPixel> mask) const;
+    [[nodiscard]] bool row_could_matter(const PixelBox& part, int y, double scale,
+                                        double threshold) const;
     [[nodiscard]] Decision decide_pixel(int x, int y, double scale, double threshold) const;
     [[nodiscard]] Decision decide_exactly(int x, int y, double scale, double threshold) const;
     /// Squared one-sigma answers at a pixel, measured and unmeasured.

@@ -66,6 +66,10 @@ public:
     std::int64_t marks = 0;
 
     [[nodiscard]] std::int64_t count() const override { return marks; }
+    [[nodiscard]] bool any_unmeasured() const override {
+        return std::any_of(pairs.begin(), pairs.end(),
+                           [](const FaintPair& pair) { return !pair.measured; });
+    }
 
     void add_to(const FaintWindows& windows) const override {
         for (const FaintPair& pair : pairs) {
@@ -120,7 +124,8 @@ private:
     void add_victim(int victim, DetectorMarks& marks, FaintEchoes& faint) const;
     void add_pair(int victim, int source, const Sensitivity& sensitivity, DetectorMarks& marks,
                   FaintEchoes& faint) const;
-    [[nodiscard]] double truncation_of(int victim, int source, const Sensitivity& sensitivity) const;
+    [[nodiscard]] double truncation_of(int victim, int source,
+                                       const Sensitivity& sensitivity) const;
     void add_blob_mark(int victim, int source, const SourceBlob& blob, const EchoPath& path,
                        const EchoTerms& terms, DetectorMarks& marks) const;
     void add_unknown(int victim, const Sensitivity& sensitivity, DetectorMarks& marks) const;
@@ -216,9 +221,8 @@ void CrosstalkPrediction::add_victim(int victim, DetectorMarks& marks, FaintEcho
         if (sources_[static_cast<std::size_t>(source)]) {
             add_pair(victim, source, sensitivity, marks, faint);
         }
-        marks.assessment.truncation_response =
-            std::max(marks.assessment.truncation_response,
-                     truncation_of(victim, source, sensitivity));
+        marks.assessment.truncation_response = std::max(marks.assessment.truncation_response,
+                                                        truncation_of(victim, source, sensitivity));
     }
     add_unknown(victim, sensitivity, marks);
 }
@@ -228,7 +232,8 @@ double CrosstalkPrediction::truncation_of(int victim, int source,
     const Pair& pair = params_.pair(victim, source);
     const double gain = camera_.amplifier(params_.ref(victim)).gain_e_per_adu;
     const double floor_adu = digest_of(source).floor_adu;
-    const double left_out_e = EchoTerms::estimate(pair, params_.extras(pair), gain).bound(floor_adu);
+    const double left_out_e =
+        EchoTerms::estimate(pair, params_.extras(pair), gain).bound(floor_adu);
     return std::max(kTruncation * context_.threshold, left_out_e * sensitivity.per_plateau_e());
 }
 
