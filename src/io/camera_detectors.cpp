@@ -14,6 +14,7 @@ constexpr std::size_t kMostLayouts = 64;
 constexpr std::size_t kMostAmplifiersOfLayout = 1024;
 constexpr std::size_t kMostDetectors = 4096;
 constexpr std::size_t kMostAmplifiers = 65536;
+constexpr std::size_t kLongestName = 64;
 constexpr NumberRange kPlace{-1e4, 1e4, "mm"};
 constexpr NumberRange kAngle{-360.0, 360.0, "deg"};
 
@@ -138,7 +139,7 @@ Detector read_detector(const YamlValue& value, const std::map<std::string, Layou
     Detector detector;
     detector.id = read_identifier(map.required("id"));
     const YamlValue layout_name = map.required("layout");
-    const auto layout = layouts.find(read_identifier(layout_name));
+    const auto layout = layouts.find(layout_name.text(kLongestName));
     if (layout == layouts.end()) {
         layout_name.refuse("a name under `layouts`");
     }

@@ -68,12 +68,12 @@ bool CsvReader::read_text_line() {
     for (;;) {
         if (at_ == block_.size()) {
             block_.resize(static_cast<std::size_t>(std::min(kBlock, file_.size() - offset_)));
+            at_ = 0;
             if (block_.empty()) {
                 return !text_.empty();
             }
             file_.read_at(offset_, std::as_writable_bytes(std::span(block_)));
             offset_ += static_cast<std::int64_t>(block_.size());
-            at_ = 0;
         }
         const std::string_view rest(block_.data() + at_, block_.size() - at_);
         const std::string_view part = rest.substr(0, rest.find('\n'));

@@ -183,7 +183,7 @@ std::string_view nearest_word(std::string_view typed, const std::vector<std::str
     constexpr std::size_t kLongestWord = 64;
     constexpr std::size_t kShortestPrefix = 3;
     std::string_view nearest;
-    std::size_t least = std::max<std::size_t>(1, typed.size() / 3) + 1;
+    std::size_t least = std::max<std::size_t>(1, (typed.size() + 1) / 3) + 1;
     if (typed.size() > kLongestWord) {
         return nearest;
     }
