@@ -1,10 +1,12 @@
 #include <array>
 #include <charconv>
 #include <cmath>
+#include <cstdint>
+#include <cstdio>
 #include <fmt/format.h>
 #include <memory>
 #include <string>
-#include <string_view>
+#include <unistd.h>
 #include <vector>
 
 #include "cli/command.h"
@@ -49,6 +51,29 @@ io::CoveredDisc covered_disc(const std::string& text) {
     return {{values[0], values[1]}, values[2]};
 }
 
+/// Rows read so far, on standard error where a progress bar would be: how many there will be is not
+/// known before the end.
+class RowCounter {
+public:
+    explicit RowCounter(const CommandLine& line)
+        : shown_(!line.quiet && !line.json && isatty(fileno(stderr)) == 1) {}
+    ~RowCounter() {
+        if (shown_) {
+            fmt::print(stderr, "\r\033[K");
+        }
+    }
+    RowCounter(const RowCounter&) = delete;
+    RowCounter& operator=(const RowCounter&) = delete;
+    void show(std::int64_t rows) const {
+        if (shown_) {
+            fmt::print(stderr, "\rstars {}\033[K", rows);
+        }
+    }
+
+private:
+    bool shown_;
+};
+
 std::string coverage_text(const io::StarCoverage& coverage) {
     if (!coverage.declared.empty()) {
         return fmt::format("coverage: {} declared discs", coverage.declared.size());
@@ -68,8 +93,11 @@ int import(const CommandLine& line, const ImportOptions& options) {
     for (const std::string& text : options.covers) {
         settings.covers.push_back(covered_disc(text));
     }
-    const io::StarImportReport report =
-        io::import_star_list(options.from, options.to, settings, nullptr);
+    const io::StarImportReport report = [&] {
+        const RowCounter counter(line);
+        return io::import_star_list(options.from, options.to, settings,
+                                    [&counter](std::int64_t rows) { counter.show(rows); });
+    }();
     Value::Array mags(report.mag_columns.begin(), report.mag_columns.end());
     print_json(line, Value::Object{{"out", options.to},
                                    {"stars", report.stars},
