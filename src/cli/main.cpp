@@ -19,7 +19,6 @@ int run(int argc, char** argv) {
     line.app.name("straymark");
     line.app.require_subcommand(1);
     line.app.set_version_flag("--version", "straymark " STRAYMARK_VERSION);
-    add_simulate(line);
     add_check(line);
     add_stars(line);
     add_build(line);
