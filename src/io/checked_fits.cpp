@@ -11,7 +11,6 @@
 #include <variant>
 
 #include "core/error.h"
-#include "io/fits_pixels.h"
 
 namespace straymark::io {
 namespace {
@@ -74,37 +73,38 @@ BinaryTable CheckedFits::table(const std::string& name) const {
 }
 
 std::vector<float> CheckedFits::float_image(const FitsHdu& unit) const {
-    const std::optional<ImageSize> size = image_size(unit);
-    if (!size || unit.kind != HduKind::image) {
-        refuse(place_of(unit), "no plain image of two axes", "one", "make the file again");
-    }
-    std::vector<float> pixels(static_cast<std::size_t>(size->width) *
-                              static_cast<std::size_t>(size->height));
-    read_pixels(file_, unit, {0, 0, size->width, size->height}, pixels);
-    return pixels;
+    return decoded<float>(unit, TFLOAT);
 }
 
 std::vector<std::int16_t> CheckedFits::int16_image(const FitsHdu& unit) const {
+    if (unit.bitpix != SHORT_IMG || unit.scale != 1.0 || unit.zero != 0.0) {
+        refuse(place_of(unit), "another kind of image", "signed 16-bit integers",
+               "this is not the mask of one exposure");
+    }
+    return decoded<std::int16_t>(unit, TSHORT);
+}
+
+template <typename Pixel>
+std::vector<Pixel> CheckedFits::decoded(const FitsHdu& unit, int type) const {
     const std::optional<ImageSize> size = image_size(unit);
-    const bool stated = unit.bitpix == SHORT_IMG && unit.scale == 1.0 && unit.zero == 0.0;
-    if (!size || !stated || !unit.data_sum) {
-        refuse(place_of(unit), "another kind of image, or one without DATASUM",
-               "signed 16-bit integers, as a mask of one exposure has them", "make the mask again");
+    if (!size || !unit.data_sum) {
+        refuse(place_of(unit), size ? "no DATASUM" : "no image of two axes",
+               "an image as this program writes it", "make the file again");
     }
     // InputFile has opened this very name; the library must not see a home folder in it.
     const std::string name = path().starts_with('/') ? path() : "./" + path();
-    std::vector<std::int16_t> pixels(static_cast<std::size_t>(size->width) *
-                                     static_cast<std::size_t>(size->height));
+    std::vector<Pixel> pixels(static_cast<std::size_t>(size->width) *
+                              static_cast<std::size_t>(size->height));
     int status = 0;
     fitsfile* opened = nullptr;
     fits_open_diskfile(&opened, name.c_str(), READONLY, &status);
     const FitsHandle handle(opened);
     fits_movabs_hdu(opened, unit.number + 1, nullptr, &status);
-    fits_read_img(opened, TSHORT, 1, static_cast<LONGLONG>(pixels.size()), nullptr, pixels.data(),
+    fits_read_img(opened, type, 1, static_cast<LONGLONG>(pixels.size()), nullptr, pixels.data(),
                   nullptr, &status);
     if (status != 0) {
         refuse(place_of(unit), library_message(status), "an image that decodes",
-               "make the mask again");
+               "make the file again");
     }
     return pixels;
 }

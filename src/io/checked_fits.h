@@ -31,9 +31,9 @@ public:
     /// The table of this name. Throws InputError where there is none.
     [[nodiscard]] BinaryTable table(const std::string& name) const;
 
-    /// The pixels of an image of two axes, row by row from the first. float_image: not compressed.
-    /// int16_image: signed 16-bit integers, decoded by cfitsio, which is told so before it sees any
-    /// data that their sums hold. Throw InputError where the image is of another kind.
+    /// The pixels of an image of two axes, row by row from the first, plain or compressed, decoded
+    /// by cfitsio now that their sums are known to hold. int16_image takes no other type. Throw
+    /// InputError where the unit holds something else, or has no DATASUM.
     [[nodiscard]] std::vector<float> float_image(const FitsHdu& unit) const;
     [[nodiscard]] std::vector<std::int16_t> int16_image(const FitsHdu& unit) const;
 
@@ -42,6 +42,9 @@ public:
                              const std::string& expected, const std::string& advice) const;
 
 private:
+    template <typename Pixel>
+    [[nodiscard]] std::vector<Pixel> decoded(const FitsHdu& unit, int type) const;
+
     InputFile file_;
     std::vector<FitsHdu> units_;
 };

@@ -8,7 +8,7 @@
 #include <fmt/format.h>
 #include <string_view>
 
-#include "core/frames.h"
+#include "score/close_ups.h"
 #include "score/pixels.h"
 
 namespace straymark::score {
@@ -22,8 +22,7 @@ constexpr Colour kDark{18, 20, 26};
 constexpr int kMargin = 24;
 constexpr int kGap = 16;
 constexpr int kOverviewSide = 624;
-constexpr int kCloseUps = 8;
-constexpr int kCloseUpPx = 37;  // odd: the echo's peak is in the middle
+constexpr int kMostCloseUps = 8;
 constexpr int kZoom = 4;
 constexpr int kCloseUpSide = kCloseUpPx * kZoom;
 constexpr int kWidth = 2 * kMargin + 2 * kOverviewSide + kGap;
@@ -31,9 +30,6 @@ constexpr int kOverviewTop = 92;
 constexpr int kCloseUpTop = kOverviewTop + kOverviewSide + 44;
 constexpr int kLegendTop = kCloseUpTop + 2 * kCloseUpSide + 10 + 24;
 constexpr int kHeight = kLegendTop + 50;
-
-/// What a pixel's flag was worth.
-enum class PixelClass : std::uint8_t { clear, found, missed, outside, between, unknown, count };
 
 constexpr std::array<Colour, static_cast<std::size_t>(PixelClass::count)> kClassColours = {{
     kDark,            // clear
@@ -50,28 +46,6 @@ constexpr std::array<std::string_view, static_cast<std::size_t>(PixelClass::coun
     "flagged, not true",
     "1 to 1.5, not flagged",
     "marginal or unassessed"};
-
-PixelClass class_of(const FigureDetector& detector, std::size_t index) {
-    const auto response = static_cast<double>(detector.response[index]);
-    const double strength = std::abs(response);
-    const BitValues& values = detector.found.values;
-    const std::int32_t bits = detector.found.present ? detector.found.bits[index] : 0;
-    const bool any_flag = (bits & (values.positive | values.negative)) != 0;
-    if (flagged_as(detector.found, index, response) && strength >= kTrueResponse) {
-        return PixelClass::found;
-    }
-    if (strength >= kRequiredResponse) {
-        return PixelClass::missed;
-    }
-    if (any_flag) {
-        return PixelClass::outside;
-    }
-    if (strength >= kTrueResponse) {
-        return PixelClass::between;
-    }
-    return (bits & (values.marginal | values.unassessed)) != 0 ? PixelClass::unknown
-                                                               : PixelClass::clear;
-}
 
 Colour mixed(Colour a, Colour b, double share_of_b) {
     const auto mix = [share_of_b](std::uint8_t x, std::uint8_t y) {
@@ -161,93 +135,6 @@ void draw_overview(Canvas& canvas, int left, std::span<const FigureDetector> det
     }
 }
 
-struct CloseUp {
-    const FigureDetector* detector = nullptr;
-    const TrueEcho* echo = nullptr;
-    DetectorPixel centre;
-    double response = 0.0;
-    std::int64_t wrong = 0;  ///< missed and falsely flagged pixels about it
-    std::string_view reason;
-};
-
-PixelBox window_of(const CloseUp& view) {
-    return PixelBox{view.centre.x, view.centre.y, view.centre.x + 1, view.centre.y + 1}.grown(
-        kCloseUpPx / 2);
-}
-
-std::int64_t wrong_pixels(const CloseUp& view) {
-    const TrueDetector& truth = view.detector->truth;
-    const PixelBox box = window_of(view).intersected({0, 0, truth.width, truth.height});
-    std::int64_t wrong = 0;
-    for (int y = box.y0; y < box.y1; ++y) {
-        for (int x = box.x0; x < box.x1; ++x) {
-            const PixelClass kind = class_of(*view.detector, std::size_t(y) * truth.width + x);
-            wrong += kind == PixelClass::missed || kind == PixelClass::outside ? 1 : 0;
-        }
-    }
-    return wrong;
-}
-
-/// All echoes that had to be found, strongest first.
-std::vector<CloseUp> candidates(std::span<const FigureDetector> detectors) {
-    std::vector<CloseUp> views;
-    for (const FigureDetector& detector : detectors) {
-        for (const TrueEcho& echo : detector.truth.echoes) {
-            const DetectorPixel centre{static_cast<int>(std::lround(echo.x_px)),
-                                       static_cast<int>(std::lround(echo.y_px))};
-            if (amplifier_at(detector.truth, centre.x, centre.y) == nullptr) {
-                continue;
-            }
-            const auto response = static_cast<double>(
-                detector.response[std::size_t(centre.y) * detector.truth.width + centre.x]);
-            if (std::abs(response) >= kRequiredResponse) {
-                views.push_back({&detector, &echo, centre, response, 0, ""});
-            }
-        }
-    }
-    std::stable_sort(views.begin(), views.end(), [](const CloseUp& a, const CloseUp& b) {
-        return std::abs(a.response) > std::abs(b.response);
-    });
-    return views;
-}
-
-std::vector<CloseUp> chosen(std::vector<CloseUp> views) {
-    std::vector<CloseUp> picked;
-    const auto take = [&picked](const CloseUp& view, std::string_view reason) {
-        const bool apart =
-            std::none_of(picked.begin(), picked.end(), [&view](const CloseUp& other) {
-                return other.detector == view.detector &&
-                       window_of(other).contains(view.centre.x, view.centre.y);
-            });
-        if (apart && picked.size() < kCloseUps) {
-            picked.push_back(view);
-            picked.back().reason = reason;
-        }
-        return apart;
-    };
-    const auto take_first = [&](int wanted, std::string_view reason, auto begin, auto end) {
-        for (auto view = begin; view != end && wanted > 0; ++view) {
-            wanted -= take(*view, reason) ? 1 : 0;
-        }
-    };
-    take_first(2, "strong", views.begin(), views.end());
-    take_first(2, "middling", views.begin() + static_cast<std::ptrdiff_t>(views.size() / 2),
-               views.end());
-    take_first(2, "weak", views.rbegin(), views.rend());
-    // Counting is the cost: of many echoes a regular sample is looked at.
-    constexpr std::size_t kMostCounted = 2000;
-    const std::size_t stride = views.size() / kMostCounted + 1;
-    std::vector<CloseUp> counted;
-    for (std::size_t i = 0; i < views.size(); i += stride) {
-        counted.push_back(views[i]);
-        counted.back().wrong = wrong_pixels(views[i]);
-    }
-    std::stable_sort(counted.begin(), counted.end(),
-                     [](const CloseUp& a, const CloseUp& b) { return a.wrong > b.wrong; });
-    take_first(2, "worst", counted.begin(), counted.end());
-    return picked;
-}
-
 template <typename PixelColour>
 void draw_close_up(Canvas& canvas, int left, int top, const CloseUp& view,
                    PixelColour pixel_colour) {
@@ -267,8 +154,8 @@ void draw_close_up(Canvas& canvas, int left, int top, const CloseUp& view,
 }
 
 void draw_close_ups(Canvas& canvas, std::span<const FigureDetector> detectors) {
-    const std::vector<CloseUp> views = chosen(candidates(detectors));
-    constexpr int kStep = (kWidth - 2 * kMargin) / kCloseUps;
+    const std::vector<CloseUp> views = close_ups(detectors);
+    constexpr int kStep = (kWidth - 2 * kMargin) / kMostCloseUps;
     for (std::size_t i = 0; i < views.size(); ++i) {
         const CloseUp& view = views[i];
         const int left = kMargin + static_cast<int>(i) * kStep;

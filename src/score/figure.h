@@ -2,21 +2,12 @@
 
 #include <span>
 #include <string>
-#include <vector>
 
 #include "score/canvas.h"
-#include "score/found.h"
+#include "score/figure_detector.h"
 #include "score/report.h"
-#include "score/truth.h"
 
 namespace straymark::score {
-
-/// One detector as a picture needs it.
-struct FigureDetector {
-    TrueDetector truth;
-    std::vector<float> response;  ///< true_response of `truth`
-    FoundDetector found;
-};
 
 /// A page that shows one exposure: true response on the left and what the mask made of it on the
 /// right, for the whole of each detector; below, close-ups of the strongest, a middling and the
