@@ -146,7 +146,11 @@ void HeaderCards::add_text(std::string_view keyword, std::string_view value,
     }
     const std::size_t quoted = std::max(pieces.back().size() + 2, kValueColumns);
     if (!comment.empty() && kKeyword + 2 + quoted + 3 + comment.size() > kFitsCard) {
-        pieces.emplace_back();  // an empty piece carries the comment
+        // The comment takes a card of its own, with the last character: an empty piece would not be
+        // taken for a continuation by every reader.
+        const std::size_t kept = pieces.back().size() - (pieces.back().back() == '\'' ? 2 : 1);
+        pieces.push_back(pieces.back().substr(kept));
+        pieces[pieces.size() - 2].resize(kept);
     }
     if (pieces.size() > 1 && !holds("LONGSTRN")) {
         append("LONGSTRN", "'OGIP 1.0'", "strings may go on in CONTINUE cards");

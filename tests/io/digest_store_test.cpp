@@ -3,6 +3,7 @@
 #include <bit>
 #include <catch2/catch.hpp>
 #include <cerrno>
+#include <cstring>
 #include <filesystem>
 #include <fstream>
 #include <limits>
