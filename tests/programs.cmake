@@ -12,3 +12,9 @@ straymark_script_test("structure: includes" 60
 straymark_script_test("structure: the include rule sees what is planted" 60
   ${PYTHON} tests/structure/include_rule_test.py)
 straymark_script_test("structure: format" 120 tests/format.sh --check)
+
+# Benches: not tests, for a shared machine's times decide nothing. tests/bench/build_bench.py runs them.
+add_executable(mask_floor bench/mask_floor.cpp)
+target_link_libraries(mask_floor PRIVATE PkgConfig::cfitsio)
+add_executable(mask_in_memory bench/mask_in_memory.cpp ${PROJECT_SOURCE_DIR}/src/cli/observatory.cpp)
+target_link_libraries(mask_in_memory PRIVATE straymark_io fmt::fmt)

@@ -211,15 +211,19 @@ private:
             }
             match.victim = echo.victim;
             match.source = echo.source;
-            match.truth_e += echo.total_e;
+            if (std::abs(echo.peak_e) > std::abs(match.truth_e)) {
+                match.truth_e = echo.peak_e;
+            }
         }
         for (const std::size_t m : group.marks) {
             const FoundMark& mark = found_.marks[m];
             if (!mark.measured) {
                 return;
             }
-            match.predicted_e += mark.strength_e;
-            match.error_e += mark.error_e;
+            if (std::abs(mark.peak_e) > std::abs(match.predicted_e)) {
+                match.predicted_e = mark.peak_e;
+                match.error_e = mark.error_e;
+            }
         }
         if (match.truth_e != 0.0) {
             result_.tally.strengths.push_back(std::move(match));

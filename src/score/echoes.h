@@ -27,13 +27,13 @@ struct RequiredEcho {
     double dy_px = 0.0;
 };
 
-/// Marks and echoes of one victim and source that lie on each other, summed: sources blended for
-/// the one may be apart for the other.
+/// The strongest mark and the strongest echo among those of one victim and source that lie on each
+/// other, by their extreme pixels: totals depend on how far out a star's wings are followed.
 struct StrengthMatch {
     std::string victim, source;
     double truth_e = 0.0;
     double predicted_e = 0.0;
-    double error_e = 0.0;  ///< of the prediction, 1 sigma; those of marks summed add linearly
+    double error_e = 0.0;  ///< of the prediction, 1 sigma
 };
 
 struct EchoTally {

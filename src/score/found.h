@@ -18,8 +18,8 @@ struct FoundMark {
     double x_px = 0.0;     ///< where its response is largest, 0-based
     double y_px = 0.0;
     PixelBox box;
-    double strength_e = 0.0;
-    double error_e = 0.0;
+    double peak_e = 0.0;   ///< its extreme pixel, signed
+    double error_e = 0.0;  ///< of that, 1 sigma
 };
 
 /// A row of the DETECTION table.
