@@ -144,27 +144,22 @@ private:
 
     [[nodiscard]] DetectorPixel climb(const SignalWindow& window, DetectorPixel at) const {
         constexpr int kMostSteps = 64;
+        constexpr std::array<DetectorPixel, 4> kSides = {{{1, 0}, {0, 1}, {-1, 0}, {0, -1}}};
         double best = response_at(window, at.x, at.y);
-        for (int step = 0; step < kMostSteps; ++step) {
-            DetectorPixel next = at;
-            for (int dy = -1; dy <= 1; ++dy) {
-                for (int dx = -1; dx <= 1; ++dx) {
-                    const int x = at.x + dx;
-                    const int y = at.y + dy;
-                    if ((dx == 0 && dy == 0) || !whole_.contains(x, y)) {
-                        continue;
-                    }
-                    const double response = response_at(window, x, y);
-                    if (response > best) {
-                        best = response;
-                        next = {x, y};
-                    }
+        // Go on in a direction as long as it rises; done when four in turn do not.
+        int refused = 0;
+        for (int step = 0; refused < 4 && step < kMostSteps; ++step) {
+            const DetectorPixel& side = kSides[static_cast<std::size_t>(step % 4)];
+            ++refused;
+            while (whole_.contains(at.x + side.x, at.y + side.y)) {
+                const double response = response_at(window, at.x + side.x, at.y + side.y);
+                if (response <= best) {
+                    break;
                 }
+                best = response;
+                at = {at.x + side.x, at.y + side.y};
+                refused = 0;
             }
-            if (next == at) {
-                break;
-            }
-            at = next;
         }
         return at;
     }

@@ -150,6 +150,9 @@ EchoShape::EchoShape(std::shared_ptr<const SourceImage> source, const SourceBlob
     const int tick1 = std::min(blob.tick1 + path_.offset_ticks + latest, victim.end_tick());
     const int row0 = std::max(blob.row0, victim.first_row());
     const int row1 = std::min(blob.row1, victim.end_row());
+    whole_ = tick0 == blob.tick0 + path_.offset_ticks + earliest &&
+             tick1 == blob.tick1 + path_.offset_ticks + latest && row0 == blob.row0 &&
+             row1 == blob.row1;
     if (tick0 >= tick1 || row0 >= row1) {
         return;  // falls beside the data: no pixel, empty bounds
     }
@@ -166,6 +169,10 @@ void EchoShape::add_to(const SignalWindow& window, float scale) const {
 }
 
 double EchoShape::total_e() const {
+    if (whole_ && terms_.lags.empty() && terms_.bend == nullptr &&
+        terms_.linear == terms_.clipped_linear) {
+        return terms_.linear * blob_.total_adu;
+    }
     if (bounds_.empty()) {
         return 0.0;
     }

@@ -59,6 +59,7 @@ private:
     EchoPath path_;
     EchoTerms terms_;
     PixelBox bounds_;
+    bool whole_ = false;  ///< no part falls into prescan or overscan
 };
 
 }  // namespace straymark::crosstalk

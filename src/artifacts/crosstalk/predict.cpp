@@ -19,44 +19,44 @@ namespace {
 struct Sensitivity {
     double noise_e = 0.0;          ///< of the victim amplifier, template included
     double root_sum_square = 0.0;  ///< sqrt(sum P^2)
-    double largest_weight = 0.0;   ///< at least max |D|
     double weight_sum = 0.0;       ///< at least sum |D|
+    double weight_norm = 0.0;      ///< at least sqrt(sum D^2)
 
     /// Response of a wide plateau of one electron per pixel is at most this.
     [[nodiscard]] double per_plateau_e() const { return weight_sum / (noise_e * root_sum_square); }
-    /// Response of a total of one electron, however placed, is at most this.
-    [[nodiscard]] double per_total_e() const {
-        return largest_weight / (noise_e * root_sum_square);
-    }
+    /// Response of a signal whose squares sum to one is at most this (Cauchy and Schwarz).
+    [[nodiscard]] double per_norm_e() const { return weight_norm / (noise_e * root_sum_square); }
 };
 
 Sensitivity sensitivity_of(const Psf& psf, double noise_e, int background_px) {
-    double sum_square = 0.0;
-    double largest = 0.0;
-    double sum = 0.0;
+    Sensitivity result{noise_e, 0.0, 0.0, 0.0};
     for (const float value : psf.values) {
-        sum_square += static_cast<double>(value) * static_cast<double>(value);
-        largest = std::max(largest, std::abs(static_cast<double>(value)));
-        sum += std::abs(static_cast<double>(value));
+        result.root_sum_square += static_cast<double>(value) * static_cast<double>(value);
+        result.weight_sum += std::abs(static_cast<double>(value));
     }
-    Sensitivity result{noise_e, std::sqrt(sum_square), largest, sum};
+    result.root_sum_square = std::sqrt(result.root_sum_square);
+    result.weight_norm = result.root_sum_square;
     if (background_px > 0) {
-        const double side = background_px;
-        result.largest_weight += 1.0 / (side * side);
         result.weight_sum += 1.0;
+        result.weight_norm += 1.0 / background_px;
     }
     return result;
 }
+
+/// Errors of faint echoes that respond, on a plateau, with less than this fraction of the threshold
+/// are left out of the faint sum's variance.
+constexpr double kSpreadTruncation = 0.01;
 
 /// One pair's echoes that are each too faint to list.
 struct FaintPair {
     std::shared_ptr<const SourceImage> source;
     EchoPath path;
-    EchoTerms terms;        ///< best estimate
-    double spread_e = 0.0;  ///< 1 sigma of the echo per source ADU
-    float cut_adu = 0.0F;   ///< runs below this peak are left out
-    int first_blob = 0;     ///< blobs from here on are the faint ones
-    int reach_ticks = 0;    ///< largest |lag|
+    EchoTerms terms;              ///< best estimate
+    double spread_e = 0.0;        ///< 1 sigma of the echo per source ADU
+    float spread_cut_adu = 0.0F;  ///< runs below this peak have errors that do not matter
+    float cut_adu = 0.0F;         ///< runs below this peak are left out
+    int first_blob = 0;           ///< blobs from here on are the faint ones
+    int reach_ticks = 0;          ///< largest |lag|
     bool measured = true;
 };
 
@@ -97,7 +97,9 @@ private:
                 continue;
             }
             add_echo(signal, pair.path, *pair.source, run, pair.terms, 1.0);
-            add_echo_variance(variance, pair.path, *pair.source, run, pair.spread_e);
+            if (run.peak_adu >= pair.spread_cut_adu) {
+                add_echo_variance(variance, pair.path, *pair.source, run, pair.spread_e);
+            }
         }
     }
 };
@@ -251,13 +253,13 @@ void CrosstalkPrediction::add_pair(int victim, int source, const Sensitivity& se
     if (bound_e(static_cast<double>(image->largest_adu)) == 0.0) {
         return;
     }
-    // A blob responds with no more than its total times the steepest coupling that occurs in it.
+    // A blob's echo has no larger norm than the blob times the steepest coupling that occurs in it.
     const auto largest = static_cast<double>(image->largest_adu);
-    const double listed_total_adu =
-        0.25 * context_.threshold * largest / (sensitivity.per_total_e() * bound_e(largest));
+    const double listed_norm_adu =
+        0.25 * context_.threshold * largest / (sensitivity.per_norm_e() * bound_e(largest));
     std::size_t first_faint = 0;
     while (first_faint < image->blobs.size() &&
-           image->blobs[first_faint].total_adu >= listed_total_adu) {
+           image->blobs[first_faint].norm_adu >= listed_norm_adu) {
         add_blob_mark(victim, source, image->blobs[first_faint], path, terms, marks);
         ++first_faint;
     }
@@ -275,7 +277,11 @@ void CrosstalkPrediction::add_pair(int victim, int source, const Sensitivity& se
         reach = std::max(reach, std::abs(lag.ticks));
     }
     faint.marks += static_cast<std::int64_t>(image->blobs.size() - first_faint);
-    faint.pairs.push_back({image, path, terms, static_cast<double>(pair.error) * gain,
+    const double spread_e = static_cast<double>(pair.error) * gain;
+    const double spread_cut_adu = spread_e > 0.0 ? kSpreadTruncation * context_.threshold /
+                                                       (sensitivity.per_plateau_e() * spread_e)
+                                                 : 0.0;
+    faint.pairs.push_back({image, path, terms, spread_e, static_cast<float>(spread_cut_adu),
                            static_cast<float>(cut_adu), static_cast<int>(first_faint), reach,
                            pair.known()});
 }
@@ -410,9 +416,8 @@ public:
         // The noise-equivalent area is not known before the pixels are read: that of bad seeing.
         constexpr double kLargestRootArea = 10.0;
         const double coupling = params_.largest_coupling();
-        return coupling > 0.0
-                   ? 2.0 * kTruncation * context.threshold / (kLargestRootArea * coupling)
-                   : std::numeric_limits<double>::infinity();
+        return coupling > 0.0 ? kTruncation * context.threshold / (kLargestRootArea * coupling)
+                              : std::numeric_limits<double>::infinity();
     }
 
     [[nodiscard]] std::unique_ptr<ExposurePrediction> predict(const ExposureDigest& digest,

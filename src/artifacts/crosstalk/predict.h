@@ -16,6 +16,6 @@ std::unique_ptr<Predictor> make_predictor(const Camera& camera, const Product& p
 
 /// Echoes of a source level below which a plateau of them responds with less than this fraction of
 /// the threshold are left out; so is what the digest's floor cuts.
-inline constexpr double kTruncation = 0.05;
+inline constexpr double kTruncation = 0.1;
 
 }  // namespace straymark::crosstalk

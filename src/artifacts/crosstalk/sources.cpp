@@ -1,6 +1,7 @@
 #include "artifacts/crosstalk/sources.h"
 
 #include <algorithm>
+#include <cmath>
 #include <numeric>
 
 #include "raster/components.h"
@@ -53,7 +54,10 @@ void grow_blob(SourceBlob& blob, const SourceRun& run, std::span<const float> va
     blob.row1 = run.row + 1;
     blob.pixels += run.length;
     const auto of_run = values.subspan(run.first_value, static_cast<std::size_t>(run.length));
-    blob.total_adu = std::accumulate(of_run.begin(), of_run.end(), blob.total_adu);
+    for (const float value : of_run) {
+        blob.total_adu += static_cast<double>(value);
+        blob.norm_adu += static_cast<double>(value) * static_cast<double>(value);
+    }
     // Clipped values are all alike: the place is then the middle of the longest clipped run.
     const bool better = run.clipped ? run.length > longest_peak_run
                                     : longest_peak_run == 0 && run.peak_adu > blob.peak_adu;
@@ -101,10 +105,13 @@ SourceImage make_source_image(const AmplifierDigest& amplifier) {
         grow_blob(found[label], image.runs[i], image.values, longest[label]);
         ++found[label].run_count;
     }
+    for (SourceBlob& blob : found) {
+        blob.norm_adu = std::sqrt(blob.norm_adu);
+    }
     std::vector<std::uint32_t> order(count);
     std::iota(order.begin(), order.end(), 0U);
     std::stable_sort(order.begin(), order.end(), [&](std::uint32_t a, std::uint32_t b) {
-        return found[a].total_adu > found[b].total_adu;
+        return found[a].norm_adu > found[b].norm_adu;
     });
     std::vector<std::uint32_t> rank(count);
     std::uint32_t first_run = 0;

@@ -22,6 +22,7 @@ struct SourceRun {
 /// Connected bright pixels of one amplifier: a star, or several that touch.
 struct SourceBlob {
     double total_adu = 0.0;
+    double norm_adu = 0.0;  ///< square root of the sum of squares: bounds any filter's answer
     float peak_adu = 0.0F;
     ReadoutIndex peak;  ///< of a clipped core: the middle of its longest run
     int tick0 = 0, tick1 = 0, row0 = 0, row1 = 0;  ///< bounds, half-open
@@ -36,7 +37,7 @@ struct SourceImage {
     std::span<const float> values;         ///< ADU above sky
     std::vector<SourceRun> runs;           ///< by row, then tick
     std::vector<std::uint32_t> row_start;  ///< runs of row r: row_start[r] .. row_start[r + 1]
-    std::vector<SourceBlob> blobs;         ///< largest total first
+    std::vector<SourceBlob> blobs;         ///< largest norm first
     std::vector<std::uint32_t> blob_runs;  ///< indices into runs, blob by blob
     std::vector<float> peak_from;          ///< largest peak of blobs i, i + 1, ...; one more, 0
     float largest_adu = 0.0F;
