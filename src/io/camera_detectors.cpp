@@ -117,7 +117,7 @@ Layout read_layout(const YamlValue& value) {
 void read_exceptions(const YamlValue& value, Detector& detector) {
     for (const auto& [id, entry] : value.entries(1, kMostAmplifiersOfLayout)) {
         const auto found = std::find_if(detector.amplifiers.begin(), detector.amplifiers.end(),
-                                        [&id](const Amplifier& a) { return a.id == id; });
+                                        [&id = id](const Amplifier& a) { return a.id == id; });
         if (found == detector.amplifiers.end()) {
             entry.refuse("an amplifier of this detector's layout", "",
                          fmt::format("unknown amplifier '{}'", id));

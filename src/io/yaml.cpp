@@ -15,7 +15,8 @@
 namespace straymark::io {
 namespace {
 
-constexpr std::int64_t kLargestFile = 4 << 20;
+constexpr std::int64_t kLargestFile = 1 << 20;
+constexpr std::ptrdiff_t kLongestLine = 1 << 16;
 
 bool digit(char c) {
     return c >= '0' && c <= '9';
@@ -139,6 +140,21 @@ std::string shown(std::string_view text) {
     std::replace_if(
         out.begin(), out.end(), [](unsigned char c) { return c < 0x20; }, ' ');
     return out.size() < text.size() ? out + "..." : out;
+}
+
+/// yaml-cpp reads a line to its end before it knows whether a key began there, at some microseconds
+/// a token: bounded lines bound the time that a hostile file takes.
+void require_short_lines(const std::string& path, const std::string& text) {
+    int line = 1;
+    for (auto begin = text.begin(); begin != text.end(); ++line) {
+        const auto end = std::find(begin, text.end(), '\n');
+        if (end - begin > kLongestLine) {
+            throw InputError({path, fmt::format("line {}", line),
+                              fmt::format("a line of {} bytes", end - begin),
+                              fmt::format("at most {}", kLongestLine), "break the line"});
+        }
+        begin = end == text.end() ? end : end + 1;
+    }
 }
 
 /// yaml-cpp ends the text at a byte 4 and replaces what is not UTF-8: look first.
@@ -406,6 +422,7 @@ YamlFile::YamlFile(std::string path) : YamlFile(path, read_text(path, kLargestFi
 
 YamlFile::YamlFile(std::string path, const std::string& text)
     : path_(std::move(path)), digest_(bytes_digest(std::as_bytes(std::span(text)))) {
+    require_short_lines(path_, text);
     require_plain_utf8(path_, text);
     root_ = parse_yaml(path_, text);
 }

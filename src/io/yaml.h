@@ -116,8 +116,9 @@ private:
 /// A parsed file. Not copied: its values refer to it.
 class YamlFile {
 public:
-    /// Throws InputError: not a regular file, over 4 MiB, not UTF-8, not YAML, nested deeper than
-    /// 32, over 200,000 values, or ambiguous as described above.
+    /// Throws InputError: not a regular file, over 1 MiB or 64 KiB in a line, not UTF-8, not YAML,
+    /// nested deeper than 32, over 200,000 values or 10,000 keys of one mapping, or ambiguous as
+    /// described above.
     explicit YamlFile(std::string path);
     /// The same for text in memory; `path` serves the messages.
     YamlFile(std::string path, const std::string& text);

@@ -13,6 +13,7 @@ namespace {
 
 constexpr std::size_t kDeepest = 32;
 constexpr std::size_t kMostValues = 200000;
+constexpr std::size_t kMostKeys = 10000;  // of one mapping: each is compared with those before
 
 [[noreturn]] void refuse(const std::string& path, const YAML::Mark& mark, const std::string& found,
                          const std::string& expected, const std::string& advice = "") {
@@ -115,6 +116,10 @@ private:
             refuse(path_, mark, fmt::format("key '{:.64}' a second time", value.text),
                    fmt::format("each key once (the first is at line {})", first->line),
                    "delete one of the two");
+        }
+        if (keys.size() == kMostKeys) {
+            refuse(path_, mark, fmt::format("over {} keys in one mapping", kMostKeys),
+                   "a smaller mapping");
         }
         keys.push_back({std::move(value.text), value.line, value.column});
     }
