@@ -9,6 +9,7 @@
 #include <utility>
 
 #include "core/error.h"
+#include "io/fits_writer.h"
 
 namespace straymark::io {
 namespace {
@@ -190,13 +191,6 @@ void check_start(const InputFile& file) {
     }
 }
 
-std::uint32_t folded(std::uint64_t sum) {
-    while (sum >> 32 != 0) {
-        sum = (sum & 0xFFFFFFFFU) + (sum >> 32);
-    }
-    return static_cast<std::uint32_t>(sum);
-}
-
 }  // namespace
 
 std::int64_t FitsHdu::image_bytes() const {
@@ -308,19 +302,16 @@ std::uint32_t data_checksum(const InputFile& file, const FitsHdu& hdu) {
     const std::int64_t padded =
         (hdu.data_bytes + kFitsBlockBytes - 1) / kFitsBlockBytes * kFitsBlockBytes;
     const std::int64_t end = std::min(file.size(), hdu.data_offset + padded);
-    std::array<std::uint32_t, 4096> words{};
-    std::uint64_t sum = 0;
+    std::array<std::byte, 1 << 14> block{};
+    std::uint32_t sum = 0;
     for (std::int64_t at = hdu.data_offset; at < end;) {
-        const std::int64_t length = std::min(end - at, static_cast<std::int64_t>(sizeof(words)));
-        words.fill(0);
-        file.read_at(
-            at, std::as_writable_bytes(std::span(words)).first(static_cast<std::size_t>(length)));
-        for (const std::uint32_t word : words) {
-            sum += __builtin_bswap32(word);
-        }
+        const std::int64_t length = std::min(end - at, static_cast<std::int64_t>(block.size()));
+        block.fill({});
+        file.read_at(at, std::span(block).first(static_cast<std::size_t>(length)));
+        sum = fits_sum(block, sum);
         at += length;
     }
-    return folded(sum);
+    return sum;
 }
 
 }  // namespace straymark::io
