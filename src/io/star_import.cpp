@@ -205,7 +205,7 @@ private:
                 quantity.name, fmt::format("{}", value),
                 fmt::format("{} to {} {}", quantity.least, quantity.most, quantity.units.front()));
         }
-        return value;
+        return value + 0.0;  // one zero, whatever sign the table's format kept
     }
     [[nodiscard]] double in_range(const Quantity& quantity, int column) const {
         const double value = in_range_or_null(quantity, column);

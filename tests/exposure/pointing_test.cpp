@@ -2,6 +2,7 @@
 #include <catch2/catch.hpp>
 #include <cmath>
 #include <limits>
+#include <memory>
 #include <random>
 
 #include "exposure/measure.h"
@@ -122,7 +123,7 @@ struct Recipe {
 
 struct Scene {
     Camera camera;
-    ListInMemory list;
+    std::unique_ptr<ListInMemory> list = std::make_unique<ListInMemory>();
     ExposureDigest digest;
     SkyPoint true_boresight;
     double true_psi_deg = 0.0;
@@ -165,7 +166,7 @@ Scene scene_of(const Recipe& recipe) {
         star.pm_dec_mas_yr = recipe.pm_north_mas_yr;
         // 26.005 years from J2000 to 2026-01-01.3
         star.position = {now.ra_deg, now.dec_deg - 26.005 * recipe.pm_north_mas_yr / 3.6e6};
-        scene.list.stars.push_back(star);
+        scene.list->stars.push_back(star);
         if (star.mag < 14.0 || unit(random) < recipe.missing) {
             continue;
         }
@@ -214,7 +215,7 @@ TEST_CASE("Shift and turn are found among missing and false stars") {
         recipe.turn_deg = turn;
         ++recipe.seed;
         Scene scene = scene_of(recipe);
-        refine_pointing(scene.camera, &scene.list, scene.digest);
+        refine_pointing(scene.camera, scene.list.get(), scene.digest);
         check_found(scene, recipe);
         CHECK(scene.digest.pointing.turn_deg == Approx(turn).margin(0.02));
     }
@@ -231,7 +232,7 @@ TEST_CASE("A mirrored camera, RA 0 and the neighbourhood of the pole make no dif
             recipe.turn_deg = 0.4;
             recipe.psi_deg = 359.9;
             Scene scene = scene_of(recipe);
-            refine_pointing(scene.camera, &scene.list, scene.digest);
+            refine_pointing(scene.camera, scene.list.get(), scene.digest);
             check_found(scene, recipe);
         }
     }
@@ -241,7 +242,7 @@ TEST_CASE("Listed stars are taken where they are in mid-exposure") {
     Recipe recipe;
     recipe.pm_north_mas_yr = 400.0;  // 10 arcsec since J2000
     Scene scene = scene_of(recipe);
-    refine_pointing(scene.camera, &scene.list, scene.digest);
+    refine_pointing(scene.camera, scene.list.get(), scene.digest);
     check_found(scene, recipe);
 }
 
@@ -253,7 +254,7 @@ TEST_CASE("The sky of another field is never taken for this one") {
         Scene scene = scene_of(recipe);
         recipe.seed = seed + 1000;
         const Scene other = scene_of(recipe);
-        refine_pointing(scene.camera, &other.list, scene.digest);
+        refine_pointing(scene.camera, other.list.get(), scene.digest);
         CHECK_FALSE(scene.digest.pointing.refined);
         CHECK_THAT(scene.digest.pointing.reason, Catch::Contains("chance"));
         CHECK(scene.digest.pointing.boresight.ra_deg == recipe.boresight.ra_deg);
@@ -270,7 +271,7 @@ TEST_CASE("A handful of stars is enough, where the sky is empty otherwise") {
     recipe.east_arcsec = 30.0;
     recipe.turn_deg = -0.3;
     Scene scene = scene_of(recipe);
-    refine_pointing(scene.camera, &scene.list, scene.digest);
+    refine_pointing(scene.camera, scene.list.get(), scene.digest);
     INFO(scene.digest.pointing.reason);
     REQUIRE(scene.digest.pointing.refined);
     // At least 5 stars of 0.1 px.
@@ -287,7 +288,7 @@ TEST_CASE("A header's coordinate system that fits is taken, however wrong the he
     }
     scene.digest.header.boresight = {152.0, 21.0};
     scene.digest.header.psi_deg = 123.0;
-    refine_pointing(scene.camera, &scene.list, scene.digest);
+    refine_pointing(scene.camera, scene.list.get(), scene.digest);
     REQUIRE(scene.digest.pointing.refined);
     CHECK(separation_deg(scene.digest.pointing.boresight, scene.true_boresight) * 3600.0 <
           0.05 * kPixelArcsec);
@@ -304,7 +305,7 @@ TEST_CASE("A header's coordinate system that does not fit, or cannot be read, is
         if (!readable) {
             scene.digest.detectors[1].header_wcs[1].replace(10, 10, "'RA---TNX'");
         }
-        refine_pointing(scene.camera, &scene.list, scene.digest);
+        refine_pointing(scene.camera, scene.list.get(), scene.digest);
         check_found(scene, recipe);
     }
 }
@@ -313,7 +314,7 @@ TEST_CASE("The stars' fluxes give the transparency") {
     Recipe recipe;
     recipe.transparency = 0.6;
     Scene scene = scene_of(recipe);
-    refine_pointing(scene.camera, &scene.list, scene.digest);
+    refine_pointing(scene.camera, scene.list.get(), scene.digest);
     REQUIRE(scene.digest.pointing.refined);
     // False stars at matched places are few: a median.
     CHECK(scene.digest.transparency == Approx(0.6).epsilon(1e-3));
@@ -323,7 +324,7 @@ TEST_CASE("The stars' fluxes give the transparency") {
         horizontal_from_sky(scene.camera.observatory, recipe.boresight, kMiddle).altitude_deg;
     REQUIRE(altitude > 30.0);
     scene.camera.filters["r"].extinction = 0.3;
-    refine_pointing(scene.camera, &scene.list, scene.digest);
+    refine_pointing(scene.camera, scene.list.get(), scene.digest);
     CHECK(scene.digest.transparency ==
           Approx(0.6 * std::pow(10.0, 0.4 * 0.3 * (1.0 / std::sin(altitude * kRadians) - 1.0)))
               .epsilon(2e-3));
@@ -331,10 +332,10 @@ TEST_CASE("The stars' fluxes give the transparency") {
 
 TEST_CASE("Without a magnitude in this filter positions are still refined") {
     Scene scene = scene_of({});
-    for (Star& star : scene.list.stars) {
+    for (Star& star : scene.list->stars) {
         star.mag = std::numeric_limits<double>::quiet_NaN();
     }
-    refine_pointing(scene.camera, &scene.list, scene.digest);
+    refine_pointing(scene.camera, scene.list.get(), scene.digest);
     CHECK(scene.digest.pointing.refined);
     CHECK(scene.digest.transparency == 1.0);
 }
@@ -354,5 +355,5 @@ TEST_CASE("Why a pointing is not refined is said") {
     for (DetectorDigest& detector : scene.digest.detectors) {
         detector.stars.resize(std::min<std::size_t>(detector.stars.size(), 1));
     }
-    CHECK(reason(&scene.list) == "4 stars measured, fewer than 5");
+    CHECK(reason(scene.list.get()) == "4 stars measured, fewer than 5");
 }

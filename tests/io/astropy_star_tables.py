@@ -23,11 +23,11 @@ def write(source, folder):
         table[name].unit = unit
     table.write(f"{folder}/stars.fits", format="fits")
     for form in ("tabledata", "binary", "binary2"):
-        table.write(f"{folder}/stars.{form}.vot", format="votable", table_format=form)
+        table.write(f"{folder}/stars.{form}.vot", format="votable", tabledata_format=form)
     # The same with whole numbers for names, as large surveys have them.
     table["id"] = np.arange(len(table), dtype=np.int64) + 4 * 10**18
     table.write(f"{folder}/numbers.fits", format="fits")
-    table.write(f"{folder}/numbers.binary.vot", format="votable", table_format="binary")
+    table.write(f"{folder}/numbers.binary.vot", format="votable", tabledata_format="binary")
     table.write(f"{folder}/numbers.csv", format="ascii.csv")
 
 

@@ -4,7 +4,6 @@
 #include <fstream>
 #include <limits>
 
-#include "../support/fits_builder.h"
 #include "core/error.h"
 #include "outside.h"
 #include "star_list_support.h"
@@ -58,20 +57,20 @@ TEST_CASE("FITS, VOTable in its three forms and CSV give the same list, byte for
         "astropy_star_tables.py", "write " + quoted(source) + " " + quoted(folder.file("")));
     INFO(written.output);
     REQUIRE(written.status == 0);
-    const auto bytes = [&folder](const std::string& name) {
+    const auto digest = [&folder](const std::string& name) {
         import_stars(folder.file(name), folder.file("list.fits"));
-        return contents(folder.file("list.fits"));
+        return io::file_digest(io::InputFile(folder.file("list.fits")));
     };
-    const std::string expected = bytes("stars.csv");
-    CHECK(bytes("stars.fits") == expected);
-    CHECK(bytes("stars.tabledata.vot") == expected);
-    CHECK(bytes("stars.binary.vot") == expected);
-    CHECK(bytes("stars.binary2.vot") == expected);
+    const std::string expected = digest("stars.csv");
+    CHECK(digest("stars.fits") == expected);
+    CHECK(digest("stars.tabledata.vot") == expected);
+    CHECK(digest("stars.binary.vot") == expected);
+    CHECK(digest("stars.binary2.vot") == expected);
     // Whole numbers as names, beyond what a double holds.
-    const std::string numbers = bytes("numbers.csv");
-    CHECK(numbers.find("4000000000000000007") != std::string::npos);
-    CHECK(bytes("numbers.fits") == numbers);
-    CHECK(bytes("numbers.binary.vot") == numbers);
+    const std::string numbers = digest("numbers.csv");
+    CHECK(contents(folder.file("list.fits")).find("4000000000000000007") != std::string::npos);
+    CHECK(digest("numbers.fits") == numbers);
+    CHECK(digest("numbers.binary.vot") == numbers);
 }
 
 TEST_CASE("astropy and the standard verifier read the list without complaint") {
@@ -232,9 +231,9 @@ TEST_CASE("A FITS file without a table, cut short or with arrays for numbers is 
     const std::string good = contents(folder.file("stars.fits"));
     CHECK_THAT(refused(folder.write("p.fits", good.substr(0, 2880))), Catch::Contains("no table"));
     CHECK(refused(folder.write("c.fits", good.substr(0, good.size() - 2880))) != "no error");
-    CHECK_THAT(refused(folder.write("u.fits", with(good, "'deg     '           / unit",
-                                                   "'hourangle'         / unit"))),
-               Catch::Contains("no error") || Catch::Contains("hourangle"));
+    CHECK_THAT(
+        refused(folder.write("u.fits", with(good, "TUNIT2  = 'deg     '", "TUNIT2  = 'h       '"))),
+        Catch::Contains("column 'ra'") && Catch::Contains("unit 'h'"));
     // The name is only a name: brackets and filters in it mean nothing.
     const std::string odd = folder.write("stars [STARS][1:2].fits", good);
     CHECK(refused(odd) == "no error");
