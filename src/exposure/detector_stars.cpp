@@ -15,7 +15,6 @@ namespace {
 /// A candidate is a star where its size, in units of the median's, lies between these.
 constexpr double kSmallestStar = 0.75;
 constexpr double kLargestStar = 1.35;
-constexpr double kSeeingBeta = 3.0;
 
 double median_size(const std::vector<std::vector<StarCandidate>>& candidates) {
     std::vector<double> sizes;

@@ -48,7 +48,7 @@ double PixelQuadrature::value(const MoffatShape& shape, double dx, double dy) co
             const double x = dx + node_[i];
             const double y = dy + node_[j];
             const double q = shape.a * x * x + 2.0 * shape.b * x * y + shape.c * y * y;
-            sum += weight_[i] * weight_[j] * std::exp(-shape.beta * std::log1p(q));
+            sum += weight_[i] * weight_[j] * std::exp(-shape.beta * std::log(1.0 + q));
         }
     }
     return sum;
@@ -61,7 +61,7 @@ MoffatPixel PixelQuadrature::derivatives(const MoffatShape& shape, double dx, do
             const double x = dx + node_[i];
             const double y = dy + node_[j];
             const double q = shape.a * x * x + 2.0 * shape.b * x * y + shape.c * y * y;
-            const double log_term = std::log1p(q);
+            const double log_term = std::log(1.0 + q);
             const double value = weight_[i] * weight_[j] * std::exp(-shape.beta * log_term);
             const double d_q = -shape.beta * value / (1.0 + q);
             pixel.value += value;

@@ -20,7 +20,6 @@ using Matrix34d = Eigen::Matrix<double, 3, 4>;
 constexpr double kHuber = 3.0;
 /// Pixels are trusted to this part of the profile's own value: no star is exactly the profile.
 constexpr double kProfileError = 0.02;
-constexpr double kStartBeta = 3.0;
 constexpr double kLeastBeta = 1.1;
 /// From here on a Moffat profile is a Gaussian to within a per cent.
 constexpr double kMostBeta = 30.0;
@@ -84,8 +83,8 @@ double variance_of(const PixelNoise& noise, double signal) {
 
 class Problem {
 public:
-    Problem(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px)
-        : stamps_(stamps), quadrature_(PixelQuadrature::for_fwhm(start_fwhm_px)) {
+    Problem(std::span<const StarStamp> stamps, double fwhm_px, double radius_px)
+        : stamps_(stamps), quadrature_(PixelQuadrature::for_fwhm(fwhm_px)) {
         for (const StarStamp& stamp : stamps) {
             samples_.push_back(samples_of(stamp, radius_px));
         }
@@ -244,15 +243,13 @@ bool descend(Problem& problem, Parameters& parameters) {
 
 }  // namespace
 
-MoffatFit fit_moffat(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px) {
-    Problem problem(stamps, start_fwhm_px, radius_px);
-    Parameters parameters{MoffatShape::circular(start_fwhm_px, kStartBeta), {}};
-    const double volume = parameters.shape.volume();
+MoffatFit fit_moffat(std::span<const StarStamp> stamps, const MoffatShape& start,
+                     double radius_px) {
+    Problem problem(stamps, start.fwhm(), radius_px);
+    Parameters parameters{start, {}};
     for (const StarStamp& stamp : stamps) {
-        parameters.stars.push_back({stamp.flux_adu / volume, stamp.dx, stamp.dy, 0.0, 0.0});
+        parameters.stars.push_back({stamp.flux_adu / start.volume(), stamp.dx, stamp.dy, 0.0, 0.0});
     }
-    // The second descent has the errors and backgrounds that the first one's profile predicts.
-    descend(problem, parameters);
     const bool converged = descend(problem, parameters);
     for (std::size_t s = 0; s < stamps.size(); ++s) {
         parameters.stars[s].misfit = problem.misfit(s, parameters);

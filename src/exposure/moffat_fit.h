@@ -28,7 +28,10 @@ struct MoffatFit {
 /// the stamp's pixels beyond, less the profile there: free in the fit it would take up what a
 /// profile lacks in its wings. Robust: Huber weights (3 sigma). Levenberg-Marquardt on the common
 /// parameters after elimination of the stars' (Schur complement), so the cost is linear in the
-/// pixels. start_fwhm_px: of the circular profile to begin with.
-MoffatFit fit_moffat(std::span<const StarStamp> stamps, double start_fwhm_px, double radius_px);
+/// pixels.
+///
+/// Begins with `start` and the stamps' own centroids and fluxes; pixel errors and backgrounds are
+/// those that these predict, so a second fit, begun with the result of the first, is a better one.
+MoffatFit fit_moffat(std::span<const StarStamp> stamps, const MoffatShape& start, double radius_px);
 
 }  // namespace straymark

@@ -24,6 +24,7 @@ constexpr double kMostPixels = 12000.0;
 constexpr std::size_t kLeastFitted = 12;
 /// The profile is fitted within this many FWHM of each star.
 constexpr double kFitFwhms = 3.0;
+constexpr double kLeastFitRadius = 4.0;
 /// A star whose misfit is this many times that of the so many stars just brighter and fainter is
 /// not one, or not alone.
 constexpr double kMostMisfit = 2.0;
@@ -79,19 +80,21 @@ double usual_misfit(const std::vector<StarFit>& stars, std::size_t s) {
     return median_in_place(std::span<double>(misfits));
 }
 
-/// Drops stamps that the profile fits worse than it fits others as bright; true where any was.
-bool drop_misfits(std::vector<StarStamp>& stamps, const MoffatFit& fit) {
+/// The stamps that the profile fits as well as it fits others as bright, with the centroids and
+/// fluxes of the fit.
+std::vector<StarStamp> fitting(std::vector<StarStamp> stamps, const MoffatFit& fit) {
     std::vector<StarStamp> kept;
     for (std::size_t s = 0; s < stamps.size(); ++s) {
         const StarFit& star = fit.stars[s];
         if (star.misfit <= kMostMisfit * std::max(1.0, usual_misfit(fit.stars, s)) &&
             star.amplitude_adu > 0.0) {
             kept.push_back(std::move(stamps[s]));
+            kept.back().dx = star.dx;
+            kept.back().dy = star.dy;
+            kept.back().flux_adu = star.amplitude_adu * fit.shape.volume();
         }
     }
-    const bool dropped = kept.size() < stamps.size();
-    stamps = std::move(kept);
-    return dropped;
+    return kept;
 }
 
 /// What one star shows beyond the profile at one pixel of the grid, for a star of flux one.
@@ -305,13 +308,13 @@ double full_width(const Image& image, double limit) {
     return 2.0 * sum / kDirections;
 }
 
-MoffatFit fit_profile(std::vector<StarStamp>& stamps, double fwhm) {
-    const double radius = std::max(kFitFwhms * fwhm, 4.0);
-    const auto affordable = static_cast<std::size_t>(kMostPixels / (M_PI * radius * radius));
-    if (stamps.size() > std::max(kLeastFitted, affordable)) {
-        stamps.resize(std::max(kLeastFitted, affordable));
+/// As many of the stamps, best first, as there is time to fit.
+std::vector<StarStamp> affordable(std::vector<StarStamp> stamps, double radius_px) {
+    const auto most = static_cast<std::size_t>(kMostPixels / (M_PI * radius_px * radius_px));
+    if (stamps.size() > std::max(kLeastFitted, most)) {
+        stamps.resize(std::max(kLeastFitted, most));
     }
-    return fit_moffat(stamps, fwhm, radius);
+    return stamps;
 }
 
 }  // namespace
@@ -337,16 +340,14 @@ Psf measure_psf(std::vector<StarStamp> stamps) {
         return psf;
     }
     const double fwhm = median_fwhm(stamps);
-    MoffatFit fit = fit_profile(stamps, fwhm);
-    if (drop_misfits(stamps, fit)) {
-        if (stamps.size() < kLeastPsfStars) {
-            return psf;
-        }
-        fit = fit_profile(stamps, fwhm);
-    }
-    if (!fit.shape.valid()) {
+    const double radius = std::max(kFitFwhms * fwhm, kLeastFitRadius);
+    stamps = affordable(std::move(stamps), radius);
+    const MoffatFit first = fit_moffat(stamps, MoffatShape::circular(fwhm, kSeeingBeta), radius);
+    stamps = fitting(std::move(stamps), first);
+    if (stamps.size() < kLeastPsfStars || !first.shape.valid()) {
         return psf;
     }
+    const MoffatFit fit = fit_moffat(stamps, first.shape, radius);
     psf.source = PsfSource::measured;
     psf.stars = static_cast<int>(stamps.size());
     psf.radius = psf_radius(fit.shape.fwhm());

@@ -16,6 +16,9 @@ inline constexpr int kLeastPsfStars = 5;
 /// look alike or no profile fits. Order of the stamps: any that is reproducible.
 Psf measure_psf(std::vector<StarStamp> stamps);
 
+/// Exponent of the Moffat profile of usual seeing.
+inline constexpr double kSeeingBeta = 3.0;
+
 /// Half width of the grid for images of this width: 4.5 times it, within 10 to 32 pixels.
 int psf_radius(double fwhm_px);
 

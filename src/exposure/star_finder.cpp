@@ -23,6 +23,8 @@ constexpr float kLeastNeighbours = 0.15F;
 constexpr int kBorder = 4;
 /// Maxima nearer to a brighter one than this are not looked at.
 constexpr int kLeastSeparation = 4;
+/// Maxima looked at: enough that kMostStars remain after those too near to each other are left out.
+constexpr std::size_t kMostMaxima = 512;
 constexpr double kFirstSigma = 1.2;
 constexpr double kSmallestSigma = 0.5;
 constexpr double kLargestSigma = 8.0;
@@ -118,7 +120,7 @@ std::vector<Maximum> choose_maxima(std::vector<Maximum> maxima) {
     const auto brighter = [](const Maximum& a, const Maximum& b) {
         return std::tuple(-a.smoothed, a.row, a.tick) < std::tuple(-b.smoothed, b.row, b.tick);
     };
-    const std::size_t looked_at = std::min<std::size_t>(maxima.size(), 2 * kMostStars);
+    const std::size_t looked_at = std::min(maxima.size(), kMostMaxima);
     std::partial_sort(maxima.begin(), maxima.begin() + static_cast<std::ptrdiff_t>(looked_at),
                       maxima.end(), brighter);
     std::vector<Maximum> chosen;

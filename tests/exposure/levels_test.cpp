@@ -1,3 +1,4 @@
+#include <algorithm>
 #include <catch2/catch.hpp>
 #include <cmath>
 #include <random>
@@ -231,10 +232,9 @@ TEST_CASE("cells without valid pixels take what their neighbours let expect") {
 
 TEST_CASE("the sky of a row agrees with the sky of its pixels") {
     for (const auto& [ticks, columns] : {std::pair{512, 4}, {300, 2}, {90, 1}, {1000, 7}}) {
-        std::vector<float> levels;
-        for (int k = 0; k < 3 * columns; ++k) {
-            levels.push_back(static_cast<float>((k * 37) % 11));
-        }
+        std::vector<float> levels(static_cast<std::size_t>(3 * columns));
+        std::generate(levels.begin(), levels.end(),
+                      [k = 0]() mutable { return static_cast<float>((37 * k++) % 11); });
         const SkyMesh mesh(ticks, 384, columns, 3, levels);
         std::vector<float> row(static_cast<std::size_t>(ticks));
         for (const int r : {0, 63, 64, 200, 383}) {

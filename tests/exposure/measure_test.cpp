@@ -308,3 +308,14 @@ TEST_CASE("empty, crowded and strongly lit fields end with sane numbers") {
         }
     }
 }
+
+TEST_CASE("amplifiers of a few pixels are measured or say why not") {
+    for (const auto& [width, height] : {std::pair{1, 1}, {2, 1}, {1, 7}, {3, 2}, {9, 9}, {40, 5}}) {
+        const Camera camera = make_camera(width, height, 1, 1);
+        MemoryFrame frame(camera, Field(width, height, kSky), 17);
+        const DetectorDigest digest = measure_detector(camera, 0, frame, {}, 1);
+        const AmplifierDigest& amplifier = digest.amplifiers.front();
+        CHECK((amplifier.state == AmplifierState::ok) == amplifier.reason.empty());
+        CHECK(digest.stars.empty());
+    }
+}

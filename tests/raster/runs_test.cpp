@@ -1,5 +1,6 @@
 #include "raster/runs.h"
 
+#include <algorithm>
 #include <catch2/catch.hpp>
 #include <random>
 #include <set>
@@ -27,10 +28,10 @@ PixelSet pixels_of(const std::vector<PixelRun>& runs) {
 std::vector<PixelRun> random_runs(std::mt19937& engine, int size, int count) {
     std::uniform_int_distribution<int> place(0, size - 1);
     std::uniform_int_distribution<int> length(0, 5);
-    std::vector<PixelRun> runs;
-    for (int k = 0; k < count; ++k) {
-        runs.push_back({place(engine), place(engine), length(engine)});
-    }
+    std::vector<PixelRun> runs(static_cast<std::size_t>(count));
+    std::generate(runs.begin(), runs.end(), [&] {
+        return PixelRun{place(engine), place(engine), length(engine)};
+    });
     return runs;
 }
 
