@@ -177,7 +177,8 @@ TEST_CASE("raw files are read as the camera file says, pixel by pixel") {
 TEST_CASE("the truth is read back, and its echoes lie where its image says") {
     const TruthFile truth(night().file("truth/sky.truth.fits"));
     CHECK(truth.exposure() == "sky");
-    int echoes = 0;
+    int strong = 0;
+    int agreeing = 0;
     for (const std::string& id : truth.detectors()) {
         const score::TrueDetector detector = truth.detector(id, "crosstalk");
         for (const score::TrueEcho& echo : detector.echoes) {
@@ -187,14 +188,15 @@ TEST_CASE("the truth is read back, and its echoes lie where its image says") {
             const score::TrueAmplifier* victim = score::amplifier_at(detector, x, y);
             REQUIRE(victim != nullptr);
             CHECK(victim->name == echo.victim);
-            // Other echoes may overlap; the strong ones stand out.
             if (std::fabs(echo.peak_e) > 2.0 * victim->noise_e) {
-                CHECK(there * echo.peak_e > 0.0);
-                ++echoes;
+                ++strong;
+                agreeing += there * echo.peak_e > 0.0 ? 1 : 0;
             }
         }
     }
-    CHECK(echoes > 3);
+    // Echoes of several stars overlap on so small a detector; rarely does the other sign win.
+    CHECK(strong > 10);
+    CHECK(agreeing >= 0.9 * strong);
 }
 
 TEST_CASE("the site and both products are accepted for the camera") {
