@@ -17,15 +17,12 @@ namespace {
 
 using simulate::Channel;
 using simulate::ChannelPlan;
-using simulate::Characterisation;
 using simulate::Chip;
 using simulate::Echo;
 using simulate::ExposureKind;
 using simulate::LayoutPlan;
-using simulate::PairMeasurement;
 using simulate::Scenario;
 using simulate::SimulatedExposure;
-using simulate::Stratum;
 using simulate::World;
 
 // The smallest echo that is kept, and the accuracy to which one is: parts of an electron that no
@@ -51,6 +48,11 @@ const ChannelPlan& plan_of(const Scenario& scenario, const Channel& channel) {
     return scenario.layouts[scenario.detectors[channel.detector].layout].channels[channel.number];
 }
 
+/// Degrees as a telescope writes them: to 0.04 milliarcseconds.
+double rounded(double value_deg) {
+    return std::nearbyint(value_deg * 1e8) / 1e8;
+}
+
 HeaderCards exposure_cards(const SimulatedExposure& exposure) {
     HeaderCards cards;
     cards.add_text("OBS_ID", exposure.plan.id);
@@ -63,8 +65,8 @@ HeaderCards exposure_cards(const SimulatedExposure& exposure) {
     cards.add_real("MJD-RD", exposure.instants.readout_end, "end of read-out");
     cards.add_real("EXPTIME", exposure.plan.exposure_s, "[s]");
     cards.add_text("FILTER", exposure.plan.filter);
-    cards.add_real("RA", exposure.pointing.header.ra_deg, "[deg] ICRS, asked for");
-    cards.add_real("DEC", exposure.pointing.header.dec_deg, "[deg] ICRS, asked for");
+    cards.add_real("RA", rounded(exposure.pointing.header.ra_deg), "[deg] ICRS, asked for");
+    cards.add_real("DEC", rounded(exposure.pointing.header.dec_deg), "[deg] ICRS, asked for");
     cards.add_real("CAMANG", exposure.pointing.header_camera_angle_deg, "[deg] camera angle");
     cards.add_real("CCDTEMP", -100.0, "[deg C]");
     return cards;
@@ -203,115 +205,6 @@ FitsUnit echoes_unit(const World& world, const std::vector<Echo>& echoes) {
                                  {"peak_e", "electron", peak}});
 }
 
-// What a measurement of a given error would have rested on: pixels of this level in this noise.
-constexpr double kCalibrationLevel_adu = 30000.0;
-constexpr double kCalibrationNoise_adu = 12.0;
-constexpr std::int32_t kCalibrationExposures = 12;
-constexpr double kDetectedSignificance = 3.0;
-
-FitsUnit pairs_unit(const World& world, const std::vector<PairMeasurement>& pairs) {
-    std::vector<std::string> victim;
-    std::vector<std::string> source;
-    std::vector<std::string> status;
-    std::vector<double> coefficient;
-    std::vector<double> error;
-    std::vector<double> significance;
-    std::vector<std::int32_t> pixels;
-    for (const PairMeasurement& pair : pairs) {
-        const auto [value, sigma] = pair.coefficient;
-        victim.push_back(world.instrument.channels[pair.victim].name);
-        source.push_back(world.instrument.channels[pair.source].name);
-        coefficient.push_back(value);
-        error.push_back(sigma);
-        significance.push_back(std::fabs(value) / sigma);
-        status.emplace_back(significance.back() > kDetectedSignificance ? "detected" : "zero");
-        pixels.push_back(static_cast<std::int32_t>(
-            std::ceil(std::pow(kCalibrationNoise_adu / (kCalibrationLevel_adu * sigma), 2.0))));
-    }
-    const std::vector<std::int32_t> exposures(pairs.size(), kCalibrationExposures);
-    const std::vector<double> chi2(pairs.size(), 1.0);
-    return table_unit("PAIRS", {{"victim", "", victim},
-                                {"source", "", source},
-                                {"coefficient", "", coefficient},
-                                {"error", "", error},
-                                {"pixels", "pixel", pixels},
-                                {"exposures", "", exposures},
-                                {"chi2", "", chi2},
-                                {"significance", "", significance},
-                                {"status", "", status}});
-}
-
-FitsUnit lags_unit(const World& world, const std::vector<PairMeasurement>& pairs) {
-    std::vector<std::string> victim;
-    std::vector<std::string> source;
-    std::vector<std::int32_t> ticks;
-    std::vector<double> coefficient;
-    std::vector<double> error;
-    for (const PairMeasurement& pair : pairs) {
-        for (const simulate::LagCoefficient& lag : pair.lags) {
-            victim.push_back(world.instrument.channels[pair.victim].name);
-            source.push_back(world.instrument.channels[pair.source].name);
-            ticks.push_back(lag.lag_ticks);
-            coefficient.push_back(lag.coefficient.value);
-            error.push_back(lag.coefficient.error);
-        }
-    }
-    return table_unit("LAGS", {{"victim", "", victim},
-                               {"source", "", source},
-                               {"lag", "", ticks},
-                               {"coefficient", "", coefficient},
-                               {"error", "", error}});
-}
-
-FitsUnit bends_unit(const World& world, const std::vector<PairMeasurement>& pairs) {
-    std::vector<std::string> victim;
-    std::vector<std::string> source;
-    std::vector<double> onset;
-    std::vector<double> c1;
-    std::vector<double> c2;
-    std::vector<double> c3;
-    std::vector<double> error;
-    std::vector<double> clipped;
-    std::vector<double> clipped_error;
-    for (const PairMeasurement& pair : pairs) {
-        for (const simulate::Bend& bend : pair.bend) {
-            victim.push_back(world.instrument.channels[pair.victim].name);
-            source.push_back(world.instrument.channels[pair.source].name);
-            onset.push_back(bend.onset_adu);
-            c1.push_back(bend.c1);
-            c2.push_back(bend.c2);
-            c3.push_back(bend.c3);
-            error.push_back(bend.relative_error);
-            clipped.push_back(bend.clipped.value);
-            clipped_error.push_back(bend.clipped.error);
-        }
-    }
-    return table_unit("BENDS", {{"victim", "", victim},
-                                {"source", "", source},
-                                {"onset_adu", "adu", onset},
-                                {"c1", "", c1},
-                                {"c2", "adu**(-1)", c2},
-                                {"c3", "adu**(-2)", c3},
-                                {"error", "", error},
-                                {"clipped", "", clipped},
-                                {"clipped_error", "", clipped_error}});
-}
-
-FitsUnit priors_unit(const Characterisation& known) {
-    std::vector<std::string> stratum;
-    std::vector<double> mean;
-    std::vector<double> spread;
-    for (const simulate::StratumSpread& prior : known.strata) {
-        stratum.emplace_back(prior.stratum == Stratum::device  ? "device"
-                             : prior.stratum == Stratum::board ? "board"
-                                                               : "rest");
-        mean.push_back(prior.mean);
-        spread.push_back(prior.spread);
-    }
-    return table_unit("PRIORS",
-                      {{"stratum", "", stratum}, {"mean", "", mean}, {"spread", "", spread}});
-}
-
 }  // namespace
 
 void write_simulated_raw(const std::string& path, const World& world,
@@ -339,23 +232,6 @@ void write_simulated_truth(const std::string& path, const World& world,
     HeaderCards cards;
     cards.add_text("FORMAT", "straymark-truth/1");
     cards.add_text("OBS_ID", exposure.plan.id);
-    write_fits(path, cards, units);
-}
-
-void write_simulated_product(const std::string& path, const World& world,
-                             const Characterisation& known, Validity validity, bool pairs) {
-    HeaderCards cards;
-    cards.add_text("FORMAT", "straymark-crosstalk/1");
-    cards.add_text("CAMERA", world.scenario.name);
-    cards.add_text("MODE", "");
-    cards.add_text("FILTER", "");
-    cards.add_text("VERSION", "simulated");
-    cards.add_real("MJDFROM", validity.from);
-    cards.add_real("MJDTO", validity.to);
-    static const std::vector<PairMeasurement> kNone;
-    const std::vector<PairMeasurement>& measured = pairs ? known.pairs : kNone;
-    const std::vector<FitsUnit> units{pairs_unit(world, measured), lags_unit(world, measured),
-                                      bends_unit(world, measured), priors_unit(known)};
     write_fits(path, cards, units);
 }
 

@@ -2,7 +2,6 @@
 
 #include <string>
 
-#include "simulate/characterise.h"
 #include "simulate/exposure.h"
 
 /// The FITS files of a simulated night, each complete or not at all.
@@ -18,17 +17,5 @@ void write_simulated_raw(const std::string& path, const simulate::World& world,
 /// DETECTOR.psf, tables AMPLIFIERS and ECHOES. Precondition: the exposure has a truth.
 void write_simulated_truth(const std::string& path, const simulate::World& world,
                            const simulate::SimulatedExposure& exposure, int threads);
-
-/// For which time a product holds, MJD.
-struct Validity {
-    double from = 0.0;
-    double to = 0.0;
-};
-
-/// A crosstalk product as a measurement of the camera would give it; with `pairs` false only what
-/// is usual in each stratum, as if nothing had been measured.
-void write_simulated_product(const std::string& path, const simulate::World& world,
-                             const simulate::Characterisation& known, Validity validity,
-                             bool pairs);
 
 }  // namespace straymark::io

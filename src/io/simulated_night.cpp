@@ -7,8 +7,10 @@
 #include <vector>
 
 #include "io/files.h"
+#include "io/product_file.h"
 #include "io/scenario_file.h"
 #include "io/simulated_fits.h"
+#include "io/simulated_product.h"
 #include "io/simulated_site.h"
 #include "simulate/characterise.h"
 #include "simulate/exposure.h"
@@ -54,11 +56,6 @@ std::int64_t write_star_list(const World& world, const std::string& path) {
     return count;
 }
 
-Validity validity_of(const Scenario& scenario) {
-    return {std::floor(scenario.exposures.front().mjd) - kValidBefore_d,
-            std::floor(scenario.exposures.back().mjd) + kValidAfter_d};
-}
-
 void write_observatory(const World& world, const std::string& folder) {
     const Characterisation known =
         simulate::characterise(world.scenario, world.instrument, world.coupling, kCalibrationSky_e);
@@ -73,10 +70,12 @@ void write_observatory(const World& world, const std::string& folder) {
     for (const char* calibrations : {"calib", "calib_priors_only"}) {
         make_folder(folder + "/" + calibrations);
     }
-    const Validity validity = validity_of(world.scenario);
-    write_simulated_product(folder + "/calib/crosstalk.fits", world, known, validity, true);
-    write_simulated_product(folder + "/calib_priors_only/crosstalk.fits", world, known, validity,
-                            false);
+    const MjdUtc from{std::floor(world.scenario.exposures.front().mjd) - kValidBefore_d};
+    const MjdUtc to{std::floor(world.scenario.exposures.back().mjd) + kValidAfter_d};
+    write_product(folder + "/calib/crosstalk.fits",
+                  simulated_product(world, known, from, to, true));
+    write_product(folder + "/calib_priors_only/crosstalk.fits",
+                  simulated_product(world, known, from, to, false));
 }
 
 }  // namespace

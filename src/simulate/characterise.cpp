@@ -260,7 +260,7 @@ PairMeasurement measure_pair(const Responses& responses, int place, const FullRe
         bend = observer.measure(*bend);
         const double at_full = responses.response[place].back()[straight.delay_ticks - kFirstLag];
         bend->clipped = observer.measure(at_full / full.shown_adu);
-        pair.bend.push_back(*bend);
+        pair.bend = bend;
     }
     return pair;
 }

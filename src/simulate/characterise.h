@@ -1,7 +1,6 @@
 #pragma once
 
-#include <cstdint>
-#include <string>
+#include <optional>
 #include <vector>
 
 #include "simulate/coupling.h"
@@ -38,7 +37,7 @@ struct PairMeasurement {
     int delay_ticks = 0;               ///< whole ticks, known from the wiring
     Measured coefficient;              ///< at the delay, victim ADU for one source ADU
     std::vector<LagCoefficient> lags;  ///< further ticks after the delay that carry an echo
-    std::vector<Bend> bend;            ///< none or one
+    std::optional<Bend> bend;          ///< or the clipped value alone: then c1, c2, c3 are 0
 };
 
 struct StratumSpread {

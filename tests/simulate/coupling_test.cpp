@@ -226,8 +226,8 @@ TEST_CASE("what a laboratory measures is what was built in") {
         CHECK(pair.lags[0].coefficient.value == Approx(-3e-4 + 0.75 * 2e-4).margin(kSmall));
         CHECK(pair.lags[1].lag_ticks == 2);
         CHECK(pair.lags[1].coefficient.value == Approx(0.75 * 0.25 * 2e-4).margin(kSmall));
-        REQUIRE(pair.bend.size() == 1);
-        const Bend& bend = pair.bend[0];
+        REQUIRE(pair.bend);
+        const Bend& bend = *pair.bend;
         // The onset counts from the empty field, 400 e; a cubic fits a hyperbola to a few percent.
         for (const double above_field : {35000.0, 45000.0, 55000.0}) {
             const double x = above_field - bend.onset_adu;
@@ -250,10 +250,10 @@ TEST_CASE("a full pixel behind a converter that clips looks like a stronger echo
     const Characterisation known = characterise(scenario, world.instrument, world.coupling, 300.0);
     for (const PairMeasurement& pair : known.pairs) {
         if (pair.source == 0 && pair.victim == 5) {
-            REQUIRE(pair.bend.size() == 1);
+            REQUIRE(pair.bend);
             // Full well 120,000 e is 80,000 ADU; the converter ends at 65,535, of which bias takes
             // 1,000; the field's 300 e are 200 ADU of each.
-            CHECK(pair.bend[0].clipped.value ==
+            CHECK(pair.bend->clipped.value ==
                   Approx(1e-3 * (80000.0 - 200.0) / (65535.0 - 1000.0 - 200.0)).epsilon(1e-5));
         }
     }
