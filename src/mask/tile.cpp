@@ -129,8 +129,8 @@ std::pair<double, double> TileWorker::variances_at(int x, int y) const {
     return {measured, unmeasured};
 }
 
-TileWorker::Decision TileWorker::decide_exactly(int x, int y, double scale,
-                                                double threshold) const {
+TileWorker::Decision TileWorker::decide_exactly(int x, int y, double scale, double threshold,
+                                                double error_bound) const {
     const double measured = kernel_.answer_at(measured_.in, x, y) * scale;
     const double unmeasured =
         any_unmeasured_ ? kernel_.answer_at(unmeasured_.in, x, y) * scale : 0.0;
@@ -138,7 +138,8 @@ TileWorker::Decision TileWorker::decide_exactly(int x, int y, double scale,
     Decision decision;
     decision.flagged = std::abs(response) >= threshold;
     decision.negative = response < 0.0;
-    if (decision.flagged && !any_unmeasured_) {
+    const bool clear = std::abs(response) + 2.0 * error_bound < threshold;
+    if (!any_unmeasured_ && (decision.flagged || clear)) {
         return decision;
     }
     const auto [measured_variance, unmeasured_variance] = variances_at(x, y);
@@ -159,6 +160,9 @@ void TileWorker::add_faint(const FaintSum& faint) {
     faint.add_to({measured_.in, unmeasured_.in, measured_faint_.in, unmeasured_faint_.in});
     // The faint windows were filled with variances.
     const auto fold = [this](std::vector<float>& variances) {
+        if (std::all_of(variances.begin(), variances.end(), [](float v) { return v == 0.0F; })) {
+            return;
+        }
         for (std::size_t i = 0; i < spread_.signal.size(); ++i) {
             variances[i] = std::sqrt(variances[i]);
             spread_.signal[i] += variances[i];
@@ -229,7 +233,7 @@ TileWorker::Decision TileWorker::decide_pixel(int x, int y, double scale, double
     if (!any_unmeasured_ && std::abs(response) >= threshold + slack) {
         return {true, response < 0.0, false, false};
     }
-    return decide_exactly(x, y, scale, threshold);
+    return decide_exactly(x, y, scale, threshold, spread + kSpreadSlack * threshold);
 }
 
 TileCounts TileWorker::paint_patch(const NoisePatch& patch, double threshold, ArtifactBits bits,

@@ -76,7 +76,9 @@ private:
     [[nodiscard]] bool row_could_matter(const PixelBox& part, int y, double scale,
                                         double threshold) const;
     [[nodiscard]] Decision decide_pixel(int x, int y, double scale, double threshold) const;
-    [[nodiscard]] Decision decide_exactly(int x, int y, double scale, double threshold) const;
+    /// error_bound: at least one sigma of the response here.
+    [[nodiscard]] Decision decide_exactly(int x, int y, double scale, double threshold,
+                                          double error_bound) const;
     /// Squared one-sigma answers at a pixel, measured and unmeasured.
     [[nodiscard]] std::pair<double, double> variances_at(int x, int y) const;
     [[nodiscard]] SignalWindow window(const Rendered& rendered) const;
