@@ -15,6 +15,7 @@ constexpr double kHighestReadNoise = 1e5;   // e
 constexpr double kHighestSaturation = 5e9;  // ADU, above any 32-bit converter
 constexpr double kHighestFullWell = 1e9;    // e
 constexpr int kLargestOffset = 10000;       // ticks
+constexpr std::size_t kMostPairs = 1000000;
 
 /// (detector id, amplifier id) -> place; a linear search for each row would be quadratic.
 using AmplifierIndex = std::map<std::string, AmplifierRef, std::less<>>;
@@ -120,6 +121,11 @@ void read_pair_table(const std::string& path, Camera& camera) {
         return found->second;
     };
     while (table.next()) {
+        if (camera.pair_offset_ticks.size() == kMostPairs) {
+            throw InputError({path, fmt::format("line {}", table.line()),
+                              fmt::format("over {} pairs", kMostPairs), "a shorter table",
+                              "leave out pairs of offset 0"});
+        }
         const AmplifierRef from = amplifier_in(source);
         const AmplifierRef to = amplifier_in(victim);
         if (from == to) {
