@@ -14,7 +14,6 @@ namespace straymark::io {
 namespace {
 
 using simulate::AmplifierPlan;
-using simulate::CharacterisationPlan;
 using simulate::CouplingPlan;
 using simulate::ExposureKind;
 using simulate::ExposurePlan;
@@ -27,7 +26,6 @@ using simulate::SiliconPlan;
 using simulate::SitePlan;
 using simulate::StarListPlan;
 using simulate::StratumPlan;
-using simulate::StrutPlan;
 using simulate::TelescopePlan;
 
 constexpr NumberRange kAngle{-360.0, 360.0, "deg"};

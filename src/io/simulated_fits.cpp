@@ -20,7 +20,6 @@ using simulate::ChannelPlan;
 using simulate::Chip;
 using simulate::Echo;
 using simulate::ExposureKind;
-using simulate::LayoutPlan;
 using simulate::Scenario;
 using simulate::SimulatedExposure;
 using simulate::World;
@@ -209,9 +208,9 @@ FitsUnit echoes_unit(const World& world, const std::vector<Echo>& echoes) {
 
 void write_simulated_raw(const std::string& path, const World& world,
                          const SimulatedExposure& exposure) {
-    std::vector<FitsUnit> units;
-    for (int c = 0; c < static_cast<int>(exposure.raw.size()); ++c) {
-        units.push_back(raw_unit(world, c, exposure.raw[c]));
+    std::vector<FitsUnit> units(exposure.raw.size());
+    for (int c = 0; c < static_cast<int>(units.size()); ++c) {
+        units[c] = raw_unit(world, c, exposure.raw[c]);
     }
     write_fits(path, exposure_cards(exposure), units);
 }
@@ -223,9 +222,10 @@ void write_simulated_truth(const std::string& path, const World& world,
     parallel_for(static_cast<int>(chips.size()), threads, [&](int d) {
         simulate::Image image = exposure.truth.crosstalk_e[d];
         trim(image);
-        units[2 * d] = compressed_float_unit(chips[d].id + ".crosstalk", image, chips[d].width,
-                                             chips[d].height, "electron");
-        units[2 * d + 1] = spread_unit(chips[d].id, exposure.truth.spread[d]);
+        const std::size_t at = 2 * static_cast<std::size_t>(d);
+        units[at] = compressed_float_unit(chips[d].id + ".crosstalk", image, chips[d].width,
+                                          chips[d].height, "electron");
+        units[at + 1] = spread_unit(chips[d].id, exposure.truth.spread[d]);
     });
     units.push_back(amplifiers_unit(world, exposure));
     units.push_back(echoes_unit(world, exposure.truth.echoes));

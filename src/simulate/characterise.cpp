@@ -51,7 +51,7 @@ public:
             std::fill_n(empty_.of(place) + channel.prescan, channel.ticks,
                         static_cast<float>(even_e / channel.gain_e_per_adu));
         }
-        leak_row(coupling_, clock_, group_, empty_, slow_, echo_empty_);
+        leak_row(instrument_, coupling_, clock_, empty_, slow_, echo_empty_);
     }
 
     Responses record(int source_place, double highest_adu) {
@@ -67,7 +67,7 @@ public:
                 result.levels_adu.push_back(level);
                 with_.of(source_place)[pulse_tick(source, i)] += static_cast<float>(level);
             }
-            leak_row(coupling_, clock_, group_, with_, slow_, echo_);
+            leak_row(instrument_, coupling_, clock_, with_, slow_, echo_);
             for (int place = 0; place < empty_.channels(); ++place) {
                 for (int i = 0; i < pulses; ++i) {
                     result.response[place].push_back(seen(place, pulse_tick(source, i)));

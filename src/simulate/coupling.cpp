@@ -142,21 +142,16 @@ Coupling draw_coupling(const Scenario& scenario, const Instrument& instrument) {
     return coupling;
 }
 
-void leak_row(const Coupling& coupling, int clock, const ClockGroup& group, const LevelRow& level,
-              LevelRow& slow, LevelRow& echo) {
-    const int channels = static_cast<int>(group.channels.size());
-    for (int c = 0; c < channels; ++c) {
-        settle(coupling.tail_decay, level.of(c), level.ticks(), slow.of(c));
+void leak_row(const Instrument& instrument, const Coupling& coupling, int clock,
+              const LevelRow& level, LevelRow& slow, LevelRow& echo) {
+    for (int place = 0; place < level.channels(); ++place) {
+        settle(coupling.tail_decay, level.of(place), level.ticks(), slow.of(place));
     }
     echo.silence();
-    const auto place = [&](int channel) {
-        const auto found = std::lower_bound(group.channels.begin(), group.channels.end(), channel);
-        return static_cast<int>(found - group.channels.begin());
-    };
     for (const Leak& leak : coupling.by_clock[clock]) {
-        const int source = place(leak.source);
-        add_leak(leak, level.of(source), slow.of(source), 0, level.ticks(),
-                 echo.of(place(leak.victim)));
+        const int source = instrument.channels[leak.source].place;
+        const int victim = instrument.channels[leak.victim].place;
+        add_leak(leak, level.of(source), slow.of(source), 0, level.ticks(), echo.of(victim));
     }
 }
 

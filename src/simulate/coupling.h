@@ -75,8 +75,9 @@ enum class Stratum { device, board, rest };
 Stratum stratum_of(const Instrument& instrument, int source, int victim);
 
 /// Sets `echo` to what leaks into every channel of one clock during one row. `slow`: work space of
-/// the same shape. Channels are numbered as in ClockGroup::channels.
-void leak_row(const Coupling& coupling, int clock, const ClockGroup& group, const LevelRow& level,
-              LevelRow& slow, LevelRow& echo);
+/// the same shape. Channels are numbered by
+/// Channel::place.
+void leak_row(const Instrument& instrument, const Coupling& coupling, int clock,
+              const LevelRow& level, LevelRow& slow, LevelRow& echo);
 
 }  // namespace straymark::simulate

@@ -239,7 +239,7 @@ void read_out(const World& world, const std::vector<Image>& charge, int threads,
     for_clocked_rows(instrument, threads, make, [&](int clock, int row, Space& space) {
         const ClockGroup& group = instrument.clocks[clock];
         video_row(instrument, group, charge, row, space.level);
-        leak_row(world.coupling, clock, group, space.level, space.slow, space.echo);
+        leak_row(instrument, world.coupling, clock, space.level, space.slow, space.echo);
         for (int place = 0; place < static_cast<int>(group.channels.size()); ++place) {
             const int c = group.channels[place];
             digitise_row(

@@ -91,7 +91,8 @@ Instrument build_instrument(const Scenario& scenario) {
         ClockGroup& clock = instrument.clocks[chip.clock];
         for (int number = 0; number < chip.channels; ++number) {
             const int index = static_cast<int>(instrument.channels.size());
-            const Channel channel = channel_of(scenario, chip, d, number, index);
+            Channel channel = channel_of(scenario, chip, d, number, index);
+            channel.place = static_cast<int>(clock.channels.size());
             assert(clock.channels.empty() ||
                    (clock.ticks_in_row == channel.ticks_in_row() && clock.rows == channel.rows));
             clock.ticks_in_row = channel.ticks_in_row();

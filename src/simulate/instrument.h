@@ -14,6 +14,7 @@ struct Channel {
     std::string name;  ///< "DETECTOR/AMPLIFIER"
     int detector = 0;
     int number = 0;  ///< in its detector's layout
+    int place = 0;   ///< among the channels of its clock
     int prescan = 0, ticks = 0, overscan = 0, rows = 0;
     std::ptrdiff_t first_pixel = 0;  ///< index of the node's pixel in the detector's image
     std::ptrdiff_t tick_step = 0;    ///< of that index, from tick to tick

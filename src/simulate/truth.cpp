@@ -3,7 +3,6 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
-#include <map>
 
 #include "core/parallel.h"
 #include "simulate/blobs.h"
@@ -97,10 +96,11 @@ Vec2 centroid(const Chip& chip, const Channel& channel, const Blob& blob) {
     Vec2 moment;
     for (const ClockedPixel& pixel : blob) {
         const auto index = static_cast<int>(channel.pixel(pixel.tick, pixel.row));
-        const Vec2 place{static_cast<double>(index % chip.width),
-                         static_cast<double>(index / chip.width)};
-        moment = moment + pixel.charge_e * place;
-        sum += static_cast<double>(pixel.charge_e);
+        const int x = index % chip.width;
+        const int y = index / chip.width;
+        const auto charge_e = static_cast<double>(pixel.charge_e);
+        moment = moment + charge_e * Vec2{static_cast<double>(x), static_cast<double>(y)};
+        sum += charge_e;
     }
     return (1.0 / sum) * moment;
 }
@@ -115,6 +115,51 @@ std::vector<std::vector<Leak>> leaks_by_source(const Instrument& instrument,
         }
     }
     return result;
+}
+
+/// The charge of a source pixel that could cast an echo of `least_e` through a leak.
+double enough_charge(const Instrument& instrument, const Leak& leak, double least_e) {
+    return least_e * instrument.channels[leak.source].gain_e_per_adu /
+           (instrument.channels[leak.victim].gain_e_per_adu * static_cast<double>(leak.bound()));
+}
+
+float largest_charge(const Blob& blob) {
+    return std::max_element(blob.begin(), blob.end(),
+                            [](const auto& a, const auto& b) { return a.charge_e < b.charge_e; })
+        ->charge_e;
+}
+
+/// The echoes of one channel's blobs whose peak exceeds `least_e` of the victim.
+std::vector<Echo> echoes_of_source(const Instrument& instrument, float tail_decay, int source,
+                                   const std::vector<Leak>& leaks, const std::vector<Image>& excess,
+                                   double even_e, const std::vector<double>& least_e) {
+    std::vector<Echo> echoes;
+    if (leaks.empty()) {
+        return echoes;
+    }
+    const Channel& channel = instrument.channels[source];
+    std::vector<double> enough_e;
+    enough_e.reserve(leaks.size());
+    for (const Leak& leak : leaks) {
+        enough_e.push_back(enough_charge(instrument, leak, least_e[leak.victim]));
+    }
+    const auto faintest_e = static_cast<float>(*std::min_element(enough_e.begin(), enough_e.end()));
+    for (const Blob& blob : find_blobs(channel, excess[channel.detector], faintest_e)) {
+        const Passage passage(channel, tail_decay, blob, even_e);
+        const Vec2 place = centroid(instrument.chips[channel.detector], channel, blob);
+        const auto brightest_e = static_cast<double>(largest_charge(blob));
+        for (std::size_t i = 0; i < leaks.size(); ++i) {
+            if (brightest_e < enough_e[i]) {
+                continue;
+            }
+            Echo echo = passage.echo(instrument, leaks[i]);
+            if (std::fabs(echo.peak_e) > least_e[echo.victim]) {
+                echo.source_pixel = place;
+                echoes.push_back(echo);
+            }
+        }
+    }
+    return echoes;
 }
 
 }  // namespace
@@ -142,7 +187,7 @@ TruthRow::TruthRow(const Instrument& instrument, const Coupling& coupling, int c
     for (int place = 0; place < with_.channels(); ++place) {
         empty_row(instrument.channels[group.channels[place]], even_e, empty_.of(place));
     }
-    leak_row(coupling_, clock_, group, empty_, slow_, echo_empty_);
+    leak_row(instrument, coupling, clock, empty_, slow_, echo_empty_);
 }
 
 void TruthRow::add(const std::vector<Image>& excess, int row, std::vector<Image>& added) {
@@ -155,7 +200,7 @@ void TruthRow::add(const std::vector<Image>& excess, int row, std::vector<Image>
             with[t] += empty[t];
         }
     }
-    leak_row(coupling_, clock_, group, with_, slow_, echo_with_);
+    leak_row(instrument_, coupling_, clock_, with_, slow_, echo_with_);
     for (int place = 0; place < with_.channels(); ++place) {
         const Channel& victim = instrument_.channels[group.channels[place]];
         const float* with = echo_with_.of(place) + victim.prescan;
@@ -171,40 +216,16 @@ void TruthRow::add(const std::vector<Image>& excess, int row, std::vector<Image>
 std::vector<Echo> list_echoes(const Instrument& instrument, const Coupling& coupling,
                               const std::vector<Image>& excess, double even_e,
                               const std::vector<double>& noise_e, double least_noise, int threads) {
+    std::vector<double> least_e;
+    least_e.reserve(noise_e.size());
+    for (const double noise : noise_e) {
+        least_e.push_back(least_noise * noise);
+    }
     const std::vector<std::vector<Leak>> leaks = leaks_by_source(instrument, coupling);
     std::vector<std::vector<Echo>> found(instrument.channels.size());
     parallel_for(static_cast<int>(found.size()), threads, [&](int source) {
-        const Channel& channel = instrument.channels[source];
-        // Charge of the source that could matter at all in each victim.
-        std::vector<double> enough_e;
-        for (const Leak& leak : leaks[source]) {
-            const double gain = instrument.channels[leak.victim].gain_e_per_adu;
-            enough_e.push_back(least_noise * noise_e[leak.victim] * channel.gain_e_per_adu /
-                               (gain * static_cast<double>(leak.bound())));
-        }
-        if (enough_e.empty()) {
-            return;
-        }
-        const double least_e = *std::min_element(enough_e.begin(), enough_e.end());
-        for (const Blob& blob :
-             find_blobs(channel, excess[channel.detector], static_cast<float>(least_e))) {
-            const Passage passage(channel, coupling.tail_decay, blob, even_e);
-            const Vec2 place = centroid(instrument.chips[channel.detector], channel, blob);
-            const double peak_e = static_cast<double>(
-                std::max_element(blob.begin(), blob.end(), [](const auto& a, const auto& b) {
-                    return a.charge_e < b.charge_e;
-                })->charge_e);
-            for (std::size_t i = 0; i < leaks[source].size(); ++i) {
-                if (peak_e < enough_e[i]) {
-                    continue;
-                }
-                Echo echo = passage.echo(instrument, leaks[source][i]);
-                if (std::fabs(echo.peak_e) > least_noise * noise_e[echo.victim]) {
-                    echo.source_pixel = place;
-                    found[source].push_back(echo);
-                }
-            }
-        }
+        found[source] = echoes_of_source(instrument, coupling.tail_decay, source, leaks[source],
+                                         excess, even_e, least_e);
     });
     std::vector<Echo> echoes;
     for (const std::vector<Echo>& some : found) {
