@@ -103,9 +103,8 @@ TimeScale Headers::time_scale(const FoundCard& card) const {
     if (name == "TT" || name == "TDT" || name == "ET") {
         return TimeScale::tt;
     }
-    throw InputError({file_, headers_[where].place + ", keyword TIMESYS",
-                      quoted(value->text), "UTC, TAI or TT",
-                      "times on other scales are not read; convert them"});
+    throw InputError({file_, headers_[where].place + ", keyword TIMESYS", quoted(value->text),
+                      "UTC, TAI or TT", "times on other scales are not read; convert them"});
 }
 
 MjdUtc checked_instant(const Headers& headers, const FoundCard& card, std::optional<MjdUtc> time) {

@@ -117,8 +117,7 @@ FitsUnit assessed_unit(const std::vector<AssessedRow>& rows) {
                        column("flagged_fraction", "", rows, &AssessedRow::flagged_fraction),
                        column("marginal_fraction", "", rows, &AssessedRow::marginal_fraction),
                        column("unassessed_fraction", "", rows, &AssessedRow::unassessed_fraction),
-                       column("truncation_response", "", rows,
-                              &AssessedRow::truncation_response)});
+                       column("truncation_response", "", rows, &AssessedRow::truncation_response)});
 }
 
 }  // namespace

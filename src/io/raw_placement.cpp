@@ -188,8 +188,8 @@ std::optional<Placer::NamedSection> Placer::section(const Source& source,
     if (entry->starts_with('[')) {
         const std::optional<FitsSection> literal = parse_section(*entry);
         if (!literal) {
-            refuse("`raw` of the camera file", quoted(*entry),
-                   "a section [x1:x2,y1:y2]", "correct the camera file");
+            refuse("`raw` of the camera file", quoted(*entry), "a section [x1:x2,y1:y2]",
+                   "correct the camera file");
         }
         return NamedSection{*literal, source.place + ", section of the camera file"};
     }

@@ -47,8 +47,8 @@ extern "C" int LLVMFuzzerTestOneInput(const std::uint8_t* data, std::size_t size
     }
     try {
         const auto stars = io::open_star_list(source);
-        static_cast<void>(stars->within({10.0, 80.0}, 5.0, "r",
-                                        std::numeric_limits<double>::infinity()));
+        static_cast<void>(
+            stars->within({10.0, 80.0}, 5.0, "r", std::numeric_limits<double>::infinity()));
         static_cast<void>(stars->coverage({10.0, 80.0}, 5.0));
     } catch (const InputError&) {
     }
