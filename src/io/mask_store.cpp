@@ -56,6 +56,11 @@ public:
         for (const MaskCard& card : tables.primary) {
             primary.add_text(card.keyword, card.value, card.comment);
         }
+        const MaskSummary& summary = tables.summary;
+        primary.add_text("BUILDKEY", summary.build_key, "fingerprint of all inputs");
+        primary.add_real("FLAGGED", summary.flagged_fraction, "fraction of pixels flagged");
+        primary.add_real("MARGINAL", summary.marginal_fraction, "fraction of pixels marginal");
+        primary.add_real("UNASSESS", summary.unassessed_fraction, "fraction of pixels unassessed");
         std::vector<FitsUnit> units;
         for (auto& [position, image] : images_) {
             units.push_back(std::move(image));
@@ -82,7 +87,7 @@ std::string MaskFolder::path_of(const std::string& raw_file) const {
     return (std::filesystem::path(folder_) / (stem_of(name) + ".mask.fits")).string();
 }
 
-std::optional<std::string> MaskFolder::build_key(const std::string& raw_file) const {
+std::optional<MaskSummary> MaskFolder::existing(const std::string& raw_file) const {
     const std::string path = path_of(raw_file);
     if (!std::filesystem::is_regular_file(path)) {
         return std::nullopt;
@@ -94,7 +99,17 @@ std::optional<std::string> MaskFolder::build_key(const std::string& raw_file) co
         }
         const std::optional<CardValue> format = header->find("FORMAT");
         const std::optional<CardValue> key = header->find("BUILDKEY");
-        return format && format->text == kFormat && key ? std::optional(key->text) : std::nullopt;
+        const auto fraction = [&](const char* keyword) {
+            const std::optional<CardValue> value = header->find(keyword);
+            return value ? value->number() : std::nullopt;
+        };
+        const auto flagged = fraction("FLAGGED");
+        const auto marginal = fraction("MARGINAL");
+        const auto unassessed = fraction("UNASSESS");
+        if (!format || format->text != kFormat || !key || !flagged || !marginal || !unassessed) {
+            return std::nullopt;
+        }
+        return MaskSummary{key->text, *flagged, *marginal, *unassessed};
     } catch (const InputError&) {
         return std::nullopt;  // unreadable: made again, and the writing will say what is wrong
     }

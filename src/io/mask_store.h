@@ -16,7 +16,7 @@ public:
 
     /// Reads only the primary header. A file that is not a complete mask (foreign, cut short,
     /// damaged header) counts as none: the mask is made again.
-    [[nodiscard]] std::optional<std::string> build_key(const std::string& raw_file) const override;
+    [[nodiscard]] std::optional<MaskSummary> existing(const std::string& raw_file) const override;
     [[nodiscard]] std::unique_ptr<MaskFileWriter> begin(const std::string& raw_file) override;
     [[nodiscard]] std::string path_of(const std::string& raw_file) const override;
 

@@ -187,8 +187,8 @@ FitsUnit echoes_unit(const World& world, const std::vector<Echo>& echoes) {
     for (const Echo& echo : echoes) {
         victim.push_back(world.instrument.channels[echo.victim].name);
         source.push_back(world.instrument.channels[echo.source].name);
-        x.push_back(echo.peak_x + 1.0);
-        y.push_back(echo.peak_y + 1.0);
+        x.push_back(echo.crest_x + 1.0);
+        y.push_back(echo.crest_y + 1.0);
         source_x.push_back(echo.source_pixel.x + 1.0);
         source_y.push_back(echo.source_pixel.y + 1.0);
         total.push_back(echo.total_e);

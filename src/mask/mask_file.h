@@ -54,9 +54,19 @@ struct MaskCard {
     std::string keyword, value, comment;
 };
 
+/// What a mask file came to, in its primary header: enough to report it again without its pixels.
+/// Fractions of all pixels of the file's detectors.
+struct MaskSummary {
+    std::string build_key;  ///< fingerprint of all inputs
+    double flagged_fraction = 0.0;
+    double marginal_fraction = 0.0;
+    double unassessed_fraction = 0.0;
+};
+
 /// All of a mask file but its images.
 struct MaskFileTables {
-    std::vector<MaskCard> primary;  ///< OBS_ID, RAWFILE, versions, digests, BUILDKEY
+    std::vector<MaskCard> primary;  ///< OBS_ID, RAWFILE, versions, digests
+    MaskSummary summary;
     DecisionSettings settings;
     std::vector<MarkRow> marks;
     std::vector<DetectionRow> detection;

@@ -115,7 +115,7 @@ private:
 
     bool all_up_to_date(const PlannedExposure& planned, const std::string& key,
                         ExposureReport& report) const {
-        std::vector<std::string> masks;
+        ExposureReport found = report;
         for (const RawFile& file : planned.files) {
             const bool science =
                 std::any_of(file.detectors.begin(), file.detectors.end(), [&](int detector) {
@@ -125,13 +125,15 @@ private:
             if (!science) {
                 continue;
             }
-            if (ports_.masks.build_key(base_name(file.path)) != key) {
+            const std::string name = base_name(file.path);
+            const std::optional<MaskSummary> mask = ports_.masks.existing(name);
+            if (!mask || mask->build_key != key) {
                 return false;
             }
-            masks.push_back(ports_.masks.path_of(base_name(file.path)));
+            found.add_mask(ports_.masks.path_of(name), *mask);
         }
+        report = std::move(found);
         report.status = BuildStatus::up_to_date;
-        report.masks = std::move(masks);
         return true;
     }
 
@@ -211,6 +213,13 @@ private:
 };
 
 }  // namespace
+
+void ExposureReport::add_mask(const std::string& path, const MaskSummary& summary) {
+    masks.push_back(path);
+    flagged_fraction = std::max(flagged_fraction, summary.flagged_fraction);
+    marginal_fraction = std::max(marginal_fraction, summary.marginal_fraction);
+    unassessed_fraction = std::max(unassessed_fraction, summary.unassessed_fraction);
+}
 
 bool BuildReport::incomplete(double accepted_unassessed_fraction) const {
     return std::any_of(skipped.begin(), skipped.end(),

@@ -36,10 +36,12 @@ struct ExposureReport {
     std::string message;
     std::vector<std::string> masks;  ///< paths
     std::vector<std::string> notes;  ///< fallbacks taken, oddities
-    double flagged_fraction = 0.0;   ///< of the pixels of its masks, by any predictor
+    double flagged_fraction = 0.0;   ///< of the pixels of its worst mask, by any predictor
     double marginal_fraction = 0.0;
     double unassessed_fraction = 0.0;
     std::string pointing;  ///< one line: refined from how many stars, or why not
+
+    void add_mask(const std::string& path, const MaskSummary& summary);
 };
 
 struct BuildReport {

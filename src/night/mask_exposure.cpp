@@ -46,11 +46,16 @@ struct PixelFractions {
         }
         unassessed += most_unassessed;
     }
+    void add(const PixelFractions& other) {
+        pixels += other.pixels;
+        flagged += other.flagged;
+        marginal += other.marginal;
+        unassessed += other.unassessed;
+    }
 };
 
 std::vector<MaskCard> primary_cards(const Site& site, const PredictorsInForce& predictors,
-                                    const ExposureDigest& digest, const std::string& raw_file,
-                                    const std::string& key) {
+                                    const ExposureDigest& digest, const std::string& raw_file) {
     const ExposureHeader& header = digest.header;
     std::vector<MaskCard> cards = {
         {"OBS_ID", header.id, "exposure"},
@@ -58,7 +63,6 @@ std::vector<MaskCard> primary_cards(const Site& site, const PredictorsInForce& p
         {"CAMERA", site.camera.name, "camera"},
         {"FILTER", header.filter, "filter"},
         {"RESULTS", kResultsVersion, "version of the rules that decide a bit"},
-        {"BUILDKEY", key, "fingerprint of all inputs"},
         {"CAMDIG", site.camera.digest, "digest of the camera file and its tables"},
     };
     if (!site.defects_digest.empty()) {
@@ -166,7 +170,6 @@ void write_masks(const Site& site, MaskStore& store, const PredictorsInForce& pr
                  ExposureReport& report) {
     const ExposureMarks marks(site, predictors, digest, threads);
     MaskPool pool;
-    PixelFractions fractions;
     for (const auto& [raw_file, detectors] : detectors_by_file(site.camera, digest)) {
         const std::unique_ptr<MaskFileWriter> writer = store.begin(raw_file);
         std::vector<MaskFileTables> parts(detectors.size());
@@ -191,8 +194,9 @@ void write_masks(const Site& site, MaskStore& store, const PredictorsInForce& pr
             pool.give_back(std::move(mask));
         });
         MaskFileTables tables;
-        tables.primary = primary_cards(site, predictors, digest, raw_file, key);
+        tables.primary = primary_cards(site, predictors, digest, raw_file);
         tables.settings = site.decision;
+        PixelFractions fractions;
         for (std::size_t i = 0; i < parts.size(); ++i) {
             const auto append = [](auto& to, auto& from) {
                 to.insert(to.end(), std::make_move_iterator(from.begin()),
@@ -202,18 +206,13 @@ void write_masks(const Site& site, MaskStore& store, const PredictorsInForce& pr
             append(tables.detection, parts[i].detection);
             append(tables.psfs, parts[i].psfs);
             append(tables.assessed, parts[i].assessed);
-            fractions.pixels += part_fractions[i].pixels;
-            fractions.flagged += part_fractions[i].flagged;
-            fractions.marginal += part_fractions[i].marginal;
-            fractions.unassessed += part_fractions[i].unassessed;
+            fractions.add(part_fractions[i]);
         }
+        tables.summary = {key, fractions.flagged / fractions.pixels,
+                          fractions.marginal / fractions.pixels,
+                          fractions.unassessed / fractions.pixels};
         writer->finish(tables);
-        report.masks.push_back(store.path_of(raw_file));
-    }
-    if (fractions.pixels > 0.0) {
-        report.flagged_fraction = fractions.flagged / fractions.pixels;
-        report.marginal_fraction = fractions.marginal / fractions.pixels;
-        report.unassessed_fraction = fractions.unassessed / fractions.pixels;
+        report.add_mask(store.path_of(raw_file), tables.summary);
     }
 }
 

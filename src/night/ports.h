@@ -56,8 +56,8 @@ public:
 class MaskStore {
 public:
     virtual ~MaskStore() = default;
-    /// BUILDKEY of the complete mask file for this raw file; nothing where there is no such file.
-    [[nodiscard]] virtual std::optional<std::string> build_key(
+    /// Of the complete mask file for this raw file; nothing where there is no such file.
+    [[nodiscard]] virtual std::optional<MaskSummary> existing(
         const std::string& raw_file) const = 0;
     [[nodiscard]] virtual std::unique_ptr<MaskFileWriter> begin(const std::string& raw_file) = 0;
     [[nodiscard]] virtual std::string path_of(const std::string& raw_file) const = 0;

@@ -23,6 +23,8 @@ constexpr int kLevels = 48;
 constexpr double kNoticeableShare = 0.01;
 // A departure from the straight line that it would report, as a share of the line.
 constexpr double kNoticeableBend = 0.003;
+// Width of an even spread over its standard deviation, the square root of 12.
+constexpr double kEvenSpread = 3.4641016151377544;
 // A pixel that fills to this share of full well counts as full.
 constexpr double kNearlyFull = 0.985;
 
@@ -239,6 +241,15 @@ FullReading full_reading(const Scenario& scenario, const Instrument& instrument,
     return {std::min(full_adu, room_adu), full_adu};
 }
 
+/// The echo at the pair's delay of the pulse nearest to a level.
+double echo_at(const Responses& responses, int place, const Straight& straight, double level_adu) {
+    const std::vector<double>& levels = responses.levels_adu;
+    const auto nearest = std::min_element(levels.begin(), levels.end(), [&](double a, double b) {
+        return std::fabs(a - level_adu) < std::fabs(b - level_adu);
+    });
+    return responses.response[place][nearest - levels.begin()][straight.delay_ticks - kFirstLag];
+}
+
 PairMeasurement measure_pair(const Responses& responses, int place, const FullReading& full,
                              Observer observer) {
     const Straight straight = straight_part(responses, place);
@@ -258,8 +269,12 @@ PairMeasurement measure_pair(const Responses& responses, int place, const FullRe
     }
     if (bend) {
         bend = observer.measure(*bend);
-        const double at_full = responses.response[place].back()[straight.delay_ticks - kFirstLag];
+        const double at_full = echo_at(responses, place, straight, full.true_adu);
         bend->clipped = observer.measure(at_full / full.shown_adu);
+        // A clipped pixel may hold anything from just clipped to full: an even spread.
+        const double just_clipped = echo_at(responses, place, straight, full.shown_adu);
+        bend->clipped.error = std::hypot(bend->clipped.error,
+                                         (at_full - just_clipped) / full.shown_adu / kEvenSpread);
         pair.bend = bend;
     }
     return pair;

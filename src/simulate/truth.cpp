@@ -1,11 +1,13 @@
 #include "simulate/truth.h"
 
 #include <algorithm>
+#include <array>
 #include <cmath>
-#include <limits>
+#include <numeric>
 
 #include "core/parallel.h"
 #include "simulate/blobs.h"
+#include "simulate/passage.h"
 
 namespace straymark::simulate {
 namespace {
@@ -13,83 +15,56 @@ namespace {
 // An empty field has one pixel in three million above this many times its noise.
 constexpr double kFarOut = 5.0;
 
-/// The level of a channel whose data pixels all hold the same charge.
-void empty_row(const Channel& channel, double even_e, float* level) {
-    std::fill(level + channel.prescan, level + channel.prescan + channel.ticks,
-              static_cast<float>(even_e / channel.gain_e_per_adu));
-}
-
-/// The levels of a source channel while one blob passes, and what they would be without it.
-class Passage {
-public:
-    Passage(const Channel& channel, float tail_decay, const Blob& blob, double even_e)
-        : first_row_(blob.front().row),
-          rows_(blob.back().row - blob.front().row + 1),
-          with_(rows_, channel.ticks_in_row()),
-          slow_with_(rows_, channel.ticks_in_row()),
-          empty_(1, channel.ticks_in_row()),
-          slow_empty_(1, channel.ticks_in_row()) {
-        empty_row(channel, even_e, empty_.of(0));
-        settle(tail_decay, empty_.of(0), empty_.ticks(), slow_empty_.of(0));
-        for (int r = 0; r < rows_; ++r) {
-            empty_row(channel, even_e, with_.of(r));
-        }
-        int last_tick = 0;
-        first_tick_ = std::numeric_limits<int>::max();
-        for (const ClockedPixel& pixel : blob) {
-            const int tick = channel.prescan + pixel.tick;
-            with_.of(pixel.row - first_row_)[tick] +=
-                static_cast<float>(static_cast<double>(pixel.charge_e) / channel.gain_e_per_adu);
-            first_tick_ = std::min(first_tick_, tick);
-            last_tick = std::max(last_tick, tick);
-        }
-        end_tick_ = std::min(last_tick + 1 + LevelRow::kMargin, with_.ticks());
-        for (int r = 0; r < rows_; ++r) {
-            settle(tail_decay, with_.of(r), with_.ticks(), slow_with_.of(r));
-        }
-    }
-
-    /// The echo in a victim: of largest magnitude, where, and in sum.
-    [[nodiscard]] Echo echo(const Instrument& instrument, const Leak& leak) const {
-        const Channel& victim = instrument.channels[leak.victim];
-        const int begin = std::max(first_tick_, victim.prescan);
-        const int end = std::min(end_tick_, victim.prescan + victim.ticks);
-        Echo result;
-        result.source = leak.source;
-        result.victim = leak.victim;
-        LevelRow echoes(2, with_.ticks());
-        const float* without = echoes.of(1);
-        add_leak(leak, empty_.of(0), slow_empty_.of(0), begin, end, echoes.of(1));
-        for (int r = 0; r < rows_; ++r) {
-            float* with = echoes.of(0);
-            std::fill(with, with + with_.ticks(), 0.0F);
-            add_leak(leak, with_.of(r), slow_with_.of(r), begin, end, with);
-            for (int t = begin; t < end; ++t) {
-                const double added = victim.gain_e_per_adu * (static_cast<double>(with[t]) -
-                                                              static_cast<double>(without[t]));
-                result.total_e += added;
-                if (std::fabs(added) > std::fabs(result.peak_e)) {
-                    result.peak_e = added;
-                    set_peak(instrument, victim, t - victim.prescan, first_row_ + r, result);
+/// Values smoothed along one direction by the binomial weights 1 4 6 4 1, zero beyond the ends.
+/// Index line * line_step + place * place_step.
+std::vector<double> smoothed(const std::vector<double>& values, int lines, int line_step,
+                             int places, int place_step) {
+    constexpr std::array<double, 5> kWeights{1.0 / 16, 4.0 / 16, 6.0 / 16, 4.0 / 16, 1.0 / 16};
+    std::vector<double> result(values.size(), 0.0);
+    for (int line = 0; line < lines; ++line) {
+        for (int place = 0; place < places; ++place) {
+            for (int k = -2; k <= 2; ++k) {
+                if (place + k >= 0 && place + k < places) {
+                    result[line * line_step + place * place_step] +=
+                        kWeights[k + 2] * values[line * line_step + (place + k) * place_step];
                 }
             }
         }
-        return result;
     }
+    return result;
+}
 
-private:
-    static void set_peak(const Instrument& instrument, const Channel& victim, int tick, int row,
-                         Echo& echo) {
-        const int width = instrument.chips[victim.detector].width;
-        const auto pixel = static_cast<int>(victim.pixel(tick, row));
-        echo.peak_x = pixel % width;
-        echo.peak_y = pixel / width;
+/// Index of the value of largest magnitude. Precondition: not empty.
+std::size_t index_of_largest(const std::vector<double>& values) {
+    return static_cast<std::size_t>(
+        std::max_element(values.begin(), values.end(),
+                         [](double a, double b) { return std::fabs(a) < std::fabs(b); }) -
+        values.begin());
+}
+
+/// Sum and peak of an echo, and the place of its crest: the peak once smoothed over a few pixels,
+/// so that neither noise nor a flat top decides.
+Echo described(const Instrument& instrument, const Leak& leak, const EchoPatch& patch) {
+    Echo echo;
+    echo.source = leak.source;
+    echo.victim = leak.victim;
+    if (patch.added_e.empty()) {
+        return echo;
     }
-
-    int first_row_, rows_;
-    int first_tick_ = 0, end_tick_ = 0;
-    LevelRow with_, slow_with_, empty_, slow_empty_;
-};
+    echo.total_e = std::accumulate(patch.added_e.begin(), patch.added_e.end(), 0.0);
+    echo.peak_e = patch.added_e[index_of_largest(patch.added_e)];
+    const std::vector<double> along =
+        smoothed(patch.added_e, patch.rows, patch.ticks, patch.ticks, 1);
+    const auto crest = static_cast<int>(
+        index_of_largest(smoothed(along, patch.ticks, 1, patch.rows, patch.ticks)));
+    const Channel& victim = instrument.channels[leak.victim];
+    const int width = instrument.chips[victim.detector].width;
+    const auto pixel = static_cast<int>(victim.pixel(patch.first_tick + crest % patch.ticks,
+                                                     patch.first_row + crest / patch.ticks));
+    echo.crest_x = pixel % width;
+    echo.crest_y = pixel / width;
+    return echo;
+}
 
 Vec2 centroid(const Chip& chip, const Channel& channel, const Blob& blob) {
     double sum = 0.0;
@@ -152,7 +127,8 @@ std::vector<Echo> echoes_of_source(const Instrument& instrument, float tail_deca
             if (brightest_e < enough_e[i]) {
                 continue;
             }
-            Echo echo = passage.echo(instrument, leaks[i]);
+            const Channel& victim = instrument.channels[leaks[i].victim];
+            Echo echo = described(instrument, leaks[i], passage.echo(victim, leaks[i]));
             if (std::fabs(echo.peak_e) > least_e[echo.victim]) {
                 echo.source_pixel = place;
                 echoes.push_back(echo);
@@ -185,7 +161,7 @@ TruthRow::TruthRow(const Instrument& instrument, const Coupling& coupling, int c
       echo_empty_(with_) {
     const ClockGroup& group = instrument.clocks[clock];
     for (int place = 0; place < with_.channels(); ++place) {
-        empty_row(instrument.channels[group.channels[place]], even_e, empty_.of(place));
+        set_empty_field(instrument.channels[group.channels[place]], even_e, empty_.of(place));
     }
     leak_row(instrument, coupling, clock, empty_, slow_, echo_empty_);
 }

@@ -35,9 +35,9 @@ struct Echo {
     int source = 0;  ///< channels
     int victim = 0;
     Vec2 source_pixel;  ///< centroid of the blob's charge, 0-based detector pixels
-    int peak_x = 0;     ///< pixel of the victim's detector, 0-based, where the echo is largest
-    int peak_y = 0;
-    double peak_e = 0.0;   ///< signed
+    int crest_x = 0;  ///< pixel of the victim's detector, 0-based, about which the echo is largest
+    int crest_y = 0;  ///< (smoothed over a few pixels: a flat or noisy top has its crest inside)
+    double peak_e = 0.0;   ///< of the extreme pixel, signed
     double total_e = 0.0;  ///< over the victim's data pixels, signed
 };
 

@@ -9,7 +9,7 @@
 #include "support/crosstalk_scene.h"
 
 using namespace straymark;
-using namespace straymark::testing;
+using namespace straymark::test;
 
 namespace {
 

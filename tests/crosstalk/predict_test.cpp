@@ -7,7 +7,7 @@
 #include "support/crosstalk_scene.h"
 
 using namespace straymark;
-using namespace straymark::testing;
+using namespace straymark::test;
 
 namespace {
 

@@ -9,7 +9,7 @@
 #include "exposure/synthetic.h"
 
 using namespace straymark;
-using namespace straymark::testing;
+using namespace straymark::test;
 
 namespace {
 

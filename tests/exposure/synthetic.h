@@ -14,7 +14,7 @@
 /// Star fields and frames for the tests of exposure/, made without any of its code: pixels are
 /// means of 11 x 11 points (5 x 5 far out) of the profile, noise is the standard library's.
 
-namespace straymark::testing {
+namespace straymark::test {
 
 /// A detector image in electrons above the bias, 0-based.
 struct Field {
@@ -220,4 +220,4 @@ private:
     std::string path_ = "/nights/petrel 1.fits";
 };
 
-}  // namespace straymark::testing
+}  // namespace straymark::test

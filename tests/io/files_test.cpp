@@ -6,7 +6,7 @@
 #include <sys/stat.h>
 
 #include "core/error.h"
-#include "io/temporary_folder.h"
+#include "support/temporary_folder.h"
 
 using namespace straymark;
 using namespace straymark::io;

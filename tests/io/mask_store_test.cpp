@@ -29,8 +29,8 @@ MaskFileTables awkward_tables() {
                       {"VERSION", "0.1.0", ""},
                       {"EMPTY", "", "a value without characters"},
                       {"DIGEST1", kLongDigest, "of an input"},
-                      {"WIDE", std::string(60, 'w'), "a comment that needs a card of its own"},
-                      {"BUILDKEY", "xxh128:0123456789abcdef0123456789abcdef", "all inputs"}};
+                      {"WIDE", std::string(60, 'w'), "a comment that needs a card of its own"}};
+    tables.summary = {"xxh128:0123456789abcdef0123456789abcdef", 0.0125, 0.5, 1.0 / 3.0};
     tables.settings.threshold = {1.0, 0.5, 2.0, 1.25};
     tables.settings.background_px = 64;
     tables.settings.template_noise = 0.25;
@@ -154,13 +154,17 @@ TEST_CASE("Masks carry the raw file's name with another extension") {
     CHECK(store.path_of("/a/.fits") == "masks/.fits.mask.fits");
 }
 
-TEST_CASE("The build key comes back from a complete mask and from nothing else") {
+TEST_CASE("The summary comes back from a complete mask and from nothing else") {
     const test::ScratchFolder folder;
     io::MaskFolder store(folder.path());
     const DetectorMask mask = test::textured_mask(64, 20, 9);
-    CHECK_FALSE(store.build_key("n.fits").has_value());
+    CHECK_FALSE(store.existing("n.fits").has_value());
     const std::string path = write_mask(store, "n.fits", mask, mask);
-    CHECK(store.build_key("n.fits") == "xxh128:0123456789abcdef0123456789abcdef");
+    REQUIRE(store.existing("n.fits").has_value());
+    CHECK(store.existing("n.fits")->build_key == "xxh128:0123456789abcdef0123456789abcdef");
+    CHECK(store.existing("n.fits")->flagged_fraction == 0.0125);
+    CHECK(store.existing("n.fits")->marginal_fraction == 0.5);
+    CHECK(store.existing("n.fits")->unassessed_fraction == 1.0 / 3.0);
     const std::string whole = bytes_of_file(path);
 
     SECTION("any character of the primary header changed") {
@@ -168,25 +172,25 @@ TEST_CASE("The build key comes back from a complete mask and from nothing else")
                                      whole.find("CHECKSUM") + 14}) {
             const char kept = whole[at];
             change_file(path, at, kept == 'Q' ? 'R' : 'Q');
-            CHECK_FALSE(store.build_key("n.fits").has_value());
+            CHECK_FALSE(store.existing("n.fits").has_value());
             change_file(path, at, kept);
         }
-        CHECK(store.build_key("n.fits").has_value());
+        CHECK(store.existing("n.fits").has_value());
     }
     SECTION("cut short anywhere") {
         for (const std::size_t size : {std::size_t{0}, std::size_t{100}, std::size_t{2880},
                                        whole.size() / 2, whole.size() - 1}) {
             std::filesystem::resize_file(path, size);
-            CHECK_FALSE(store.build_key("n.fits").has_value());
+            CHECK_FALSE(store.existing("n.fits").has_value());
             std::ofstream(path, std::ios::binary) << whole;
         }
     }
     SECTION("something else under its name") {
         std::ofstream(path, std::ios::binary) << std::string(1 << 21, 'x');
-        CHECK_FALSE(store.build_key("n.fits").has_value());
+        CHECK_FALSE(store.existing("n.fits").has_value());
         std::filesystem::remove(path);
         std::filesystem::create_directory(path);
-        CHECK_FALSE(store.build_key("n.fits").has_value());
+        CHECK_FALSE(store.existing("n.fits").has_value());
     }
 }
 

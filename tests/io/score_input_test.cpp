@@ -81,7 +81,7 @@ void write_mask(const std::string& path, const MaskPlan& plan = {}) {
     }
     file.column("status", std::vector<std::string>(3, "measured"));
     for (const char* name :
-         {"source_x", "source_y", "peak_e", "response", "response_error", "significance"}) {
+         {"source_x", "source_y", "response", "response_error", "significance"}) {
         file.column(name, std::vector<double>(3, 1.0));
     }
     file.column("x", std::vector<double>(3, 5.0));

@@ -15,11 +15,11 @@
 #include "io/raw_reader.h"
 #include "io/scenario_file.h"
 #include "io/site_file.h"
-#include "io/temporary_folder.h"
 #include "io/truth_file.h"
 #include "simulate/characterise.h"
 #include "simulate/exposure.h"
 #include "sky/projection.h"
+#include "support/temporary_folder.h"
 
 using namespace straymark;
 using namespace straymark::io;

@@ -4,7 +4,7 @@
 
 #include "core/error.h"
 #include "io/camera_file.h"
-#include "io/temporary_folder.h"
+#include "support/temporary_folder.h"
 
 using namespace straymark;
 using namespace straymark::io;

@@ -7,7 +7,7 @@
 #include "core/error.h"
 #include "outside.h"
 #include "star_list_support.h"
-#include "temporary_folder.h"
+#include "support/temporary_folder.h"
 
 using namespace straymark;
 using namespace straymark::test;

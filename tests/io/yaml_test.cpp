@@ -5,7 +5,7 @@
 #include <limits>
 
 #include "core/error.h"
-#include "io/temporary_folder.h"
+#include "support/temporary_folder.h"
 
 using namespace straymark;
 using namespace straymark::io;

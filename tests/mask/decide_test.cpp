@@ -7,7 +7,7 @@
 #include "support/test_shapes.h"
 
 using namespace straymark;
-using namespace straymark::testing;
+using namespace straymark::test;
 
 namespace {
 

@@ -142,12 +142,50 @@ TEST_CASE("one bright pixel echoes at the tick and row of its own moment in the 
                                                  std::vector<double>(8, 20.0), 0.05, 1);
     REQUIRE(echoes.size() == 1);
     CHECK(echoes[0].victim == expected.victim);
-    CHECK(echoes[0].peak_x == expected.x);
-    CHECK(echoes[0].peak_y == expected.y);
+    CHECK(echoes[0].crest_x == expected.x);
+    CHECK(echoes[0].crest_y == expected.y);
     CHECK(echoes[0].source_pixel.x == Approx(10.0));
     CHECK(echoes[0].source_pixel.y == Approx(5.0));
     CHECK(echoes[0].peak_e == Approx(echo_e).epsilon(1e-4));
     CHECK(echoes[0].total_e == Approx(echo_e).epsilon(1e-4));
+}
+
+TEST_CASE("the crest of a flat-topped echo lies inside, not at its corner") {
+    Leak leak = resistive(1e-3F);
+    leak.source = 0;
+    leak.victim = 4;  // q/ll: the same corner
+    const World world = world_of(small_scenario(), leak);
+    std::vector<Image> excess(2, Image(96 * 64, 0.0F));
+    for (int y = 10; y < 15; ++y) {
+        for (int x = 20; x < 25; ++x) {
+            excess[0][y * 96 + x] = 60000.0F;
+        }
+    }
+    const std::vector<Echo> echoes = list_echoes(world.instrument, world.coupling, excess, 400.0,
+                                                 std::vector<double>(8, 20.0), 0.05, 1);
+    REQUIRE(echoes.size() == 1);
+    CHECK(echoes[0].crest_x == 22);
+    CHECK(echoes[0].crest_y == 12);
+    CHECK(echoes[0].total_e == Approx(25.0 * echoes[0].peak_e));
+}
+
+TEST_CASE("an echo that falls into the victim's prescan is not listed") {
+    Scenario scenario = small_scenario();
+    LayoutPlan late = small_layout();
+    late.name = "late";
+    late.prescan_ticks = 7;
+    late.overscan_ticks = 9;
+    scenario.layouts.push_back(late);
+    scenario.detectors[1].layout = 1;
+    Leak leak = resistive(1e-3F);
+    leak.source = 0;
+    leak.victim = 4;
+    const World world = world_of(scenario, leak);
+    std::vector<Image> excess(2, Image(96 * 64, 0.0F));
+    excess[0][5 * 96 + 1] = 60000.0F;  // tick 5 of the row: before the victim's first data tick
+    CHECK(list_echoes(world.instrument, world.coupling, excess, 400.0, std::vector<double>(8, 20.0),
+                      0.05, 1)
+              .empty());
 }
 
 TEST_CASE("different prescans shift an echo: channels share the clock, not the data section") {

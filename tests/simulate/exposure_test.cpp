@@ -178,46 +178,109 @@ TEST_CASE("raw pixels with leaks, less those without, are the truth but for roun
     CHECK(std::fabs(sum / count) < sky_leak + 0.02);
 }
 
-TEST_CASE("stars stand where the true pointing puts them, not where the header says") {
-    Scenario scenario = small_scenario();
-    scenario.telescope.pointing_error_arcsec = 0.0;
-    scenario.telescope.camera_angle_error_deg = 0.0;
-    scenario.coupling.device.zero_fraction = 1.0;
-    scenario.coupling.board.zero_fraction = 1.0;
-    scenario.coupling.rest.zero_fraction = 1.0;
-    // A star 0.8 mm to the east of the boresight: 21 mm of focal plane to the arcminute; the sky
-    // with north up has east on the left, so it falls on detector p's centre.
-    const double arcsec_per_mm = 1.0 / 8280.0 / kArcsecond;
-    const World world =
-        world_with(scenario, {{nudged(direction(84.0, 28.0), {0.8 * arcsec_per_mm, 0.0}), 15.0}});
-    const SimulatedExposure exposure = expose(world, 0, 1);
-    double sum = 0.0;
+/// Charge above the sky within 12 pixels of a place on the first detector, and its centroid.
+struct Found {
+    double sum_e = 0.0;
+    Vec2 centroid;
+};
+Found found_near(const World& world, const SimulatedExposure& exposure, Vec2 near) {
+    Found found;
     Vec2 moment;
-    for (int c = 0; c < 4; ++c) {
+    for (int c = 0; c < world.instrument.chips[0].channels; ++c) {
         const Channel& channel = world.instrument.channels[c];
         for (int row = 0; row < channel.rows; ++row) {
             for (int tick = 0; tick < channel.ticks; ++tick) {
-                const auto pixel = static_cast<int>(channel.pixel(tick, row));
-                const Vec2 place{static_cast<double>(pixel % 96), static_cast<double>(pixel / 96)};
+                const int pixel = static_cast<int>(channel.pixel(tick, row));
+                const int x = pixel % 96;
+                const int y = pixel / 96;
+                if (std::hypot(x - near.x, y - near.y) >= 12.0) {
+                    continue;
+                }
                 const std::size_t i =
                     static_cast<std::size_t>(row) * channel.ticks_in_row() + channel.prescan + tick;
                 const double above_e =
                     (exposure.raw[c][i] - channel.bias_adu) * channel.gain_e_per_adu -
                     exposure.even_e;
-                if (std::hypot(place.x - 47.5, place.y - 31.5) < 12.0) {
-                    sum += above_e;
-                    moment = moment + above_e * place;
-                }
+                found.sum_e += above_e;
+                moment = moment + above_e * Vec2{static_cast<double>(x), static_cast<double>(y)};
             }
         }
     }
+    found.centroid = (1.0 / found.sum_e) * moment;
+    return found;
+}
+
+Scenario without_leaks(Scenario scenario) {
+    scenario.coupling.device.zero_fraction = 1.0;
+    scenario.coupling.board.zero_fraction = 1.0;
+    scenario.coupling.rest.zero_fraction = 1.0;
+    return scenario;
+}
+
+// 0.8 mm to the east of the boresight: the sky with north up has east on the left, so a star there
+// falls on the centre of detector p.
+std::vector<SkyStar> star_on_p(double mag) {
+    return {{nudged(direction(84.0, 28.0), {0.8 / 8280.0 / kArcsecond, 0.0}), mag}};
+}
+
+TEST_CASE("a star stands where the pointing puts it, as bright as its magnitude says") {
+    Scenario scenario = without_leaks(small_scenario());
+    scenario.telescope.pointing_error_arcsec = 0.0;
+    scenario.telescope.camera_angle_error_deg = 0.0;
+    const World world = world_with(scenario, star_on_p(15.0));
+    const Found star = found_near(world, expose(world, 0, 1), {47.5, 31.5});
     // 7e5 electrons: the centroid is good to some 0.01 pixel.
-    CHECK(moment.x / sum == Approx(47.5).margin(0.05));
-    CHECK(moment.y / sum == Approx(31.5).margin(0.05));
+    CHECK(star.centroid.x == Approx(47.5).margin(0.05));
+    CHECK(star.centroid.y == Approx(31.5).margin(0.05));
     // Magnitude 15 through zero point 25.9 in 30 s, less extinction, within 12 pixels.
     const double full = 30.0 * std::pow(10.0, 0.4 * (25.9 - 15.0));
-    CHECK(sum < 1.01 * full);
-    CHECK(sum > 0.85 * full);
+    CHECK(star.sum_e < 1.01 * full);
+    CHECK(star.sum_e > 0.85 * full);
+}
+
+TEST_CASE("the sky is seen from where the telescope is, not from where its header says") {
+    Scenario scenario = without_leaks(small_scenario());
+    scenario.telescope.pointing_error_arcsec = 1.0;  // 2.7 pixels
+    scenario.telescope.camera_angle_error_deg = 0.5;
+    const World world = world_with(scenario, star_on_p(15.0));
+    const SimulatedExposure exposure = expose(world, 0, 1);
+    const Chip& chip = world.instrument.chips[0];
+    const Vec3 star = world.fields[0][0].towards;
+    const auto seen_from = [&](Vec3 ahead, double angle) {
+        return chip.pixel(*Aim(scenario.telescope, ahead, angle).image(star));
+    };
+    const Vec2 truth = seen_from(exposure.pointing.ahead, exposure.pointing.camera_angle_deg);
+    const Found found = found_near(world, exposure, truth);
+    CHECK(found.centroid.x == Approx(truth.x).margin(0.1));
+    CHECK(found.centroid.y == Approx(truth.y).margin(0.1));
+    // Errors below a twentieth of their sigma are rare, and the seed is fixed.
+    const Vec3 header =
+        direction(exposure.pointing.header.ra_deg, exposure.pointing.header.dec_deg);
+    const Vec3 miss = exposure.pointing.ahead - header;
+    CHECK(std::sqrt(dot(miss, miss)) / kArcsecond > 0.05);
+    CHECK(std::fabs(exposure.pointing.camera_angle_deg -
+                    exposure.pointing.header_camera_angle_deg) > 0.025);
+}
+
+TEST_CASE("the image's long axis is one direction of the focal plane on every detector") {
+    Scenario scenario = small_scenario();
+    scenario.seeing = {3.0, 0.3, 30.0};
+    scenario.detectors[1].row_vector = {0.0, 1.0};  // q mirrored: columns the other way, rows not
+    const World world = world_with(scenario, {});
+    const SimulatedExposure exposure = expose(world, 0, 1);
+    const auto product_of_inertia = [&](int detector) {
+        double sum = 0.0;
+        for (int y = 0; y < kSpreadSide; ++y) {
+            for (int x = 0; x < kSpreadSide; ++x) {
+                sum += exposure.truth.spread[detector][y * kSpreadSide + x] *
+                       (x - kSpreadSide / 2) * (y - kSpreadSide / 2);
+            }
+        }
+        return sum;
+    };
+    // 30 degrees from +x: along x and y of p, across on q.
+    CHECK(product_of_inertia(0) > 0.1);
+    CHECK(product_of_inertia(1) == Approx(-product_of_inertia(0)));
 }
 
 TEST_CASE("overscan holds bias and read noise only") {

@@ -14,7 +14,7 @@
 /// A small camera with amplifiers in all corners, both serial axes and a prescan, a digest of
 /// random blobs for it, and a product: the ground on which crosstalk is tested.
 
-namespace straymark::testing {
+namespace straymark::test {
 
 constexpr int kSide = 120;  ///< of a detector
 constexpr int kPrescan = 5;
@@ -214,4 +214,4 @@ inline Scene random_scene(unsigned seed, double floor_adu = 50.0, double noise_a
     return scene;
 }
 
-}  // namespace straymark::testing
+}  // namespace straymark::test

@@ -13,6 +13,8 @@
 #include <type_traits>
 #include <vector>
 
+#include "support/temporary_folder.h"
+
 /// Small FITS files for tests, byte by byte as FITS 4.0 says, without any library.
 
 namespace straymark::test {
@@ -102,36 +104,6 @@ private:
     }
 
     std::string bytes_;
-};
-
-/// A folder of its own for one test, gone at its end.
-class TemporaryFolder {
-public:
-    TemporaryFolder() {
-        std::string pattern =
-            (std::filesystem::temp_directory_path() / "straymark-XXXXXX").string();
-        if (::mkdtemp(pattern.data()) == nullptr) {
-            throw std::runtime_error("no temporary folder");
-        }
-        path_ = pattern;
-    }
-    ~TemporaryFolder() {
-        std::error_code ignored;
-        std::filesystem::remove_all(path_, ignored);
-    }
-    TemporaryFolder(const TemporaryFolder&) = delete;
-    TemporaryFolder& operator=(const TemporaryFolder&) = delete;
-    [[nodiscard]] std::string file(const std::string& name) const {
-        return (path_ / name).string();
-    }
-    /// Writes a file; returns its path.
-    [[nodiscard]] std::string write(const std::string& name, const std::string& bytes) const {
-        std::ofstream(file(name), std::ios::binary) << bytes;
-        return file(name);
-    }
-
-private:
-    std::filesystem::path path_;
 };
 
 }  // namespace straymark::test

@@ -10,7 +10,7 @@
 
 /// Signals and point-spread functions made for tests.
 
-namespace straymark::testing {
+namespace straymark::test {
 
 /// A signal given by a function of the pixel, within a box.
 class FunctionShape : public SignalShape {
@@ -99,4 +99,4 @@ struct PlainDetector {
     }
 };
 
-}  // namespace straymark::testing
+}  // namespace straymark::test
