@@ -178,6 +178,24 @@ TEST_CASE("Nulls of a VOTable are no values") {
     CHECK(found[1].id == "b & c");
 }
 
+TEST_CASE("The flags of a BINARY2 row say which cells are null") {
+    // Two rows by Python's struct and base64 modules: flags 0x10 (the fourth field is null), "a",
+    // 10.0, 20.0, 5.0; flags 0, "b", 10.01, 20.0, 6.0.
+    const TemporaryFolder folder;
+    const std::string stream =
+        "EAAAAAFhQCQAAAAAAABANAAAAAAAAECgAAAAAAAAAWJAJAUeuFHrhUA0AAAAAAAAQMAAAA==";
+    import_stars(folder.write("s.vot", votable(kFields, "<BINARY2><STREAM encoding=\"base64\">" +
+                                                            stream + "</STREAM></BINARY2>")),
+                 folder.file("l.fits"));
+    const auto found =
+        io::open_star_list(folder.file("l.fits"))->within({10.0, 20.0}, 0.1, "", kAll);
+    REQUIRE(found.size() == 2);
+    CHECK(found[0].id == "b");
+    CHECK(found[0].mag == 6.0);
+    CHECK(found[1].id == "a");
+    CHECK(std::isnan(found[1].mag));
+}
+
 TEST_CASE("VOTables that are damaged or dangerous are refused at once") {
     const std::string row = "<TR><TD>a</TD><TD>10</TD><TD>20</TD><TD>5</TD></TR>";
     CHECK_THAT(refusal(votable(kFields, "<TABLEDATA><TR><TD>a</TD></TR></TABLEDATA>")),

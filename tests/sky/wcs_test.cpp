@@ -258,6 +258,34 @@ PlacedCamera camera_of(const ReferenceTable::Row& row) {
     return out;
 }
 
+/// Numbers of cards, and the polynomials of the SIP convention evaluated term by term.
+class CardValues {
+public:
+    explicit CardValues(const std::vector<std::string>& cards) {
+        for (const std::string& text : cards) {
+            if (text[10] != '\'') {
+                values_[text.substr(0, text.find_last_not_of(' ', 7) + 1)] =
+                    std::stod(text.substr(10));
+            }
+        }
+    }
+    double operator()(const std::string& keyword) const { return values_.at(keyword); }
+    [[nodiscard]] double polynomial(const std::string& name, double u, double v) const {
+        double sum = 0.0;
+        for (int p = 0; p <= 9; ++p) {
+            for (int q = 0; q <= 9; ++q) {
+                const auto term =
+                    values_.find(name + "_" + std::to_string(p) + "_" + std::to_string(q));
+                sum += term == values_.end() ? 0.0 : term->second * std::pow(u, p) * std::pow(v, q);
+            }
+        }
+        return sum;
+    }
+
+private:
+    std::map<std::string, double> values_;
+};
+
 }  // namespace
 
 TEST_CASE("Pixels look where vectors say they look") {
@@ -292,6 +320,29 @@ TEST_CASE("The cards written for a detector hold its geometry to 0.02 px, read b
         const auto back = wcs.detector_from_sky(star);
         REQUIRE(back);
         CHECK(std::hypot(back->x_px - pixel.x_px, back->y_px - pixel.y_px) < 0.02);
+    }
+}
+
+TEST_CASE("The inverse polynomials of the cards lead from the sky to the pixel by themselves") {
+    // WCSLIB iterates and would find its way without them; other readers take AP and BP as they
+    // are.
+    for (const auto& row : ReferenceTable("wcs_cards/positions.csv").rows) {
+        const PlacedCamera placed = camera_of(row);
+        const CardValues cards(wcs_cards(placed.camera, placed.pointing, 0));
+        const auto plane = tangent_from_sky(
+            placed.pointing.boresight, {number(row, "star_ra_deg"), number(row, "star_dec_deg")});
+        REQUIRE(plane);
+        const double xi = plane->xi_rad * 180.0 / M_PI;
+        const double eta = plane->eta_rad * 180.0 / M_PI;
+        const double determinant =
+            cards("CD1_1") * cards("CD2_2") - cards("CD1_2") * cards("CD2_1");
+        const double u = (cards("CD2_2") * xi - cards("CD1_2") * eta) / determinant;
+        const double v = (cards("CD1_1") * eta - cards("CD2_1") * xi) / determinant;
+        // FITS counts pixels from 1.
+        CHECK(u + cards.polynomial("AP", u, v) + cards("CRPIX1") - 1.0 ==
+              Approx(number(row, "x_px")).margin(0.001));
+        CHECK(v + cards.polynomial("BP", u, v) + cards("CRPIX2") - 1.0 ==
+              Approx(number(row, "y_px")).margin(0.001));
     }
 }
 
