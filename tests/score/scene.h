@@ -71,6 +71,9 @@ public:
     static constexpr double kNoise = 10.0;
     static constexpr int kAmplifiers = 4;
 
+    /// What a total charge leaves in the central pixel.
+    static constexpr double kPeakShare = 1.0 / (2.0 * std::numbers::pi * kS * kS);
+
     struct Blob {
         int victim = 0, source = 0;
         int x = 0, y = 0;
@@ -78,6 +81,7 @@ public:
         [[nodiscard]] double total_e() const {
             return response * 2.0 * kS * std::sqrt(std::numbers::pi) * kNoise;
         }
+        [[nodiscard]] double peak_e() const { return total_e() * kPeakShare; }
     };
 
     EchoScene() {
@@ -118,7 +122,7 @@ public:
             found.marks.push_back({name(blob.source), true, static_cast<double>(blob.x),
                                    static_cast<double>(blob.y),
                                    PixelBox{blob.x, blob.y, blob.x + 1, blob.y + 1}.grown(reach),
-                                   blob.total_e(), 0.02 * std::abs(blob.total_e())});
+                                   blob.peak_e(), 0.02 * std::abs(blob.peak_e())});
         }
         return found;
     }
@@ -133,13 +137,11 @@ private:
             for (int x = blob.x - radius; x <= blob.x + radius; ++x) {
                 const double r2 = (x - blob.x) * (x - blob.x) + (y - blob.y) * (y - blob.y);
                 truth.signal_e[static_cast<std::size_t>(y * truth.width + x)] +=
-                    static_cast<float>(blob.total_e() * std::exp(-r2 / (2.0 * kS * kS)) /
-                                       (2.0 * std::numbers::pi * kS * kS));
+                    static_cast<float>(blob.peak_e() * std::exp(-r2 / (2.0 * kS * kS)));
             }
         }
-        const double peak = blob.total_e() / (2.0 * std::numbers::pi * kS * kS);
         truth.echoes.push_back({name(blob.victim), name(blob.source), static_cast<double>(blob.x),
-                                static_cast<double>(blob.y), blob.total_e(), peak});
+                                static_cast<double>(blob.y), blob.total_e(), blob.peak_e()});
     }
 
     /// Flags the disc where the response reaches 1; returns its radius in whole pixels.
