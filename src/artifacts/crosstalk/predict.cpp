@@ -123,6 +123,8 @@ private:
         return digest_.detectors[static_cast<std::size_t>(ref.detector)]
             .amplifiers[static_cast<std::size_t>(ref.amplifier)];
     }
+    /// Is any amplifier read in step with one of this detector?
+    [[nodiscard]] bool could_receive(int detector) const;
     void add_victim(int victim, DetectorMarks& marks, FaintEchoes& faint) const;
     void add_pair(int victim, int source, const Sensitivity& sensitivity, DetectorMarks& marks,
                   FaintEchoes& faint) const;
@@ -175,13 +177,24 @@ double CrosstalkPrediction::saturated_level_adu(int flat) const {
     return std::max(0.0, amplifier.saturation_adu - digest_of(flat).bias_adu);
 }
 
+bool CrosstalkPrediction::could_receive(int detector) const {
+    const auto& amplifiers = camera_.detectors[static_cast<std::size_t>(detector)].amplifiers;
+    for (int a = 0; a < static_cast<int>(amplifiers.size()); ++a) {
+        if (!params_.sources_of(params_.flat({detector, a})).empty()) {
+            return true;
+        }
+    }
+    return false;
+}
+
 DetectorMarks CrosstalkPrediction::marks_on(int detector) const {
     const Detector& camera_detector = camera_.detectors[static_cast<std::size_t>(detector)];
     const DetectorDigest& digest = digest_.detectors[static_cast<std::size_t>(detector)];
     DetectorMarks marks;
     marks.assessment = {AssessmentState::assessed, "", params_.calibration()};
     const PixelBox whole{0, 0, camera_detector.width, camera_detector.height};
-    if (!digest.present || digest.psf.source == PsfSource::none) {
+    const bool blind = digest.psf.source == PsfSource::none && could_receive(detector);
+    if (!digest.present || blind) {
         marks.assessment.state = AssessmentState::unassessed;
         marks.assessment.reason = !digest.present ? digest.reason
                                                   : "no point-spread function: too few stars "
