@@ -124,6 +124,8 @@ private:
         return digest_.detectors[static_cast<std::size_t>(ref.detector)]
             .amplifiers[static_cast<std::size_t>(ref.amplifier)];
     }
+    /// Is any amplifier read in step with one of this detector?
+    [[nodiscard]] bool could_receive(int detector) const;
     void add_victim(int victim, DetectorMarks& marks, FaintEchoes& faint) const;
     void add_pair(int victim, int source, const Sensitivity& sensitivity, DetectorMarks& marks,
                   FaintEchoes& faint) const;
@@ -178,6 +180,7 @@ double CrosstalkPrediction::saturated_level_adu(int flat) const {
     return std::max(0.0, amplifier.saturation_adu - digest_of(flat).bias_adu);
 }
 
+<<<<<<< HEAD
 template <typename T>
 void append(std::vector<T>& to, std::vector<T>&& from) {
     to.insert(to.end(), std::make_move_iterator(from.begin()), std::make_move_iterator(from.end()));
@@ -193,6 +196,16 @@ void join(DetectorMarks& to, DetectorMarks&& from) {
 void join(FaintEchoes& to, FaintEchoes&& from) {
     append(to.pairs, std::move(from.pairs));
     to.marks += from.marks;
+=======
+bool CrosstalkPrediction::could_receive(int detector) const {
+    const auto& amplifiers = camera_.detectors[static_cast<std::size_t>(detector)].amplifiers;
+    for (int a = 0; a < static_cast<int>(amplifiers.size()); ++a) {
+        if (!params_.sources_of(params_.flat({detector, a})).empty()) {
+            return true;
+        }
+    }
+    return false;
+>>>>>>> refs/heads/real
 }
 
 DetectorMarks CrosstalkPrediction::marks_on(int detector) const {
@@ -201,7 +214,8 @@ DetectorMarks CrosstalkPrediction::marks_on(int detector) const {
     DetectorMarks marks;
     marks.assessment = {AssessmentState::assessed, "", params_.calibration()};
     const PixelBox whole{0, 0, camera_detector.width, camera_detector.height};
-    if (!digest.present || digest.psf.source == PsfSource::none) {
+    const bool blind = digest.psf.source == PsfSource::none && could_receive(detector);
+    if (!digest.present || blind) {
         marks.assessment.state = AssessmentState::unassessed;
         marks.assessment.reason = !digest.present ? digest.reason
                                                   : "no point-spread function: too few stars "
