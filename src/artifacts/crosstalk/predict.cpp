@@ -180,7 +180,6 @@ double CrosstalkPrediction::saturated_level_adu(int flat) const {
     return std::max(0.0, amplifier.saturation_adu - digest_of(flat).bias_adu);
 }
 
-<<<<<<< HEAD
 template <typename T>
 void append(std::vector<T>& to, std::vector<T>&& from) {
     to.insert(to.end(), std::make_move_iterator(from.begin()), std::make_move_iterator(from.end()));
@@ -196,7 +195,8 @@ void join(DetectorMarks& to, DetectorMarks&& from) {
 void join(FaintEchoes& to, FaintEchoes&& from) {
     append(to.pairs, std::move(from.pairs));
     to.marks += from.marks;
-=======
+}
+
 bool CrosstalkPrediction::could_receive(int detector) const {
     const auto& amplifiers = camera_.detectors[static_cast<std::size_t>(detector)].amplifiers;
     for (int a = 0; a < static_cast<int>(amplifiers.size()); ++a) {
@@ -205,7 +205,6 @@ bool CrosstalkPrediction::could_receive(int detector) const {
         }
     }
     return false;
->>>>>>> refs/heads/real
 }
 
 DetectorMarks CrosstalkPrediction::marks_on(int detector) const {
