@@ -124,6 +124,7 @@ std::vector<MarkRow> MaskFile::marks() const {
         .fill("strength_e", &MarkRow::strength_e, NotANumber::allowed)
         .fill("error_e", &MarkRow::error_e, NotANumber::allowed)
         .fill("peak_e", &MarkRow::peak_e, NotANumber::allowed)
+        .fill("peak_error_e", &MarkRow::peak_error_e, NotANumber::allowed)
         .fill("response", &MarkRow::response, NotANumber::allowed)
         .fill("response_error", &MarkRow::response_error, NotANumber::allowed)
         .fill("significance", &MarkRow::significance, NotANumber::allowed)

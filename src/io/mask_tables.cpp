@@ -58,6 +58,7 @@ FitsUnit marks_unit(const std::vector<MarkRow>& rows) {
                                 column("strength_e", kElectron, rows, &MarkRow::strength_e),
                                 column("error_e", kElectron, rows, &MarkRow::error_e),
                                 column("peak_e", kElectron, rows, &MarkRow::peak_e),
+                                column("peak_error_e", kElectron, rows, &MarkRow::peak_error_e),
                                 column("response", "", rows, &MarkRow::response),
                                 column("response_error", "", rows, &MarkRow::response_error),
                                 column("significance", "", rows, &MarkRow::significance),

@@ -57,7 +57,7 @@ score::FoundMark found_mark(const MarkRow& row, const MaskFile& file) {
             row.y - 1.0,
             {row.x1 - 1, row.y1 - 1, row.x2, row.y2},
             row.peak_e,
-            row.strength_e != 0.0 ? std::abs(row.peak_e * row.error_e / row.strength_e) : 0.0};
+            row.peak_error_e};
 }
 
 /// Fails where the mask was made for another background subtraction than the score is asked for.

@@ -102,6 +102,7 @@ public:
         }
         const SignalWindow window = render(*leading, values_);
         const DetectorPixel start = brightest(window, outcome.peak_e);
+        outcome.peak_error_e = peak_error(mark, start, outcome.peak_e);
         const DetectorPixel peak = climb(window, start);
         outcome.peak = peak;
         const double noise = noise_at(noise_, peak.x, peak.y);
@@ -162,6 +163,23 @@ private:
             }
         }
         return at;
+    }
+
+    double peak_error(const Mark& mark, DetectorPixel at, double peak_e) {
+        double variance = 0.0;
+        for (const ErrorMode& mode : mark.errors) {
+            double value = mode.relative * peak_e;
+            if (mode.shape && !mode.shape->bounds().empty()) {
+                const SignalWindow window = render(*mode.shape, mode_values_);
+                value =
+                    window.box.contains(at.x, at.y)
+                        ? static_cast<double>(window.values[static_cast<std::size_t>(
+                              (at.y - window.box.y0) * window.box.width() + at.x - window.box.x0)])
+                        : 0.0;
+            }
+            variance += value * value;
+        }
+        return std::sqrt(variance);
     }
 
     double error_at(const Mark& mark, DetectorPixel at, double own_response, double scale) {

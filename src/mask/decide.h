@@ -26,6 +26,7 @@ struct MarkOutcome {
     double response_error = 0.0;  ///< 1 sigma, at that pixel
     DetectorPixel peak;           ///< where
     double peak_e = 0.0;          ///< of the signal, largest in magnitude, electrons per pixel
+    double peak_error_e = 0.0;    ///< 1 sigma, of that pixel
     std::int64_t area_px = 0;     ///< flagged pixels within its bounds grown by one FWHM
 };
 

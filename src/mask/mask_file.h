@@ -13,12 +13,12 @@ namespace straymark {
 /// One row of the MARKS table. Positions are FITS pixels (1-based) here: this is what people read.
 struct MarkRow {
     std::string kind, detector, cause, source, shape, calibration,
-        status;                              ///< status: measured | unmeasured
-    double source_x = 0.0, source_y = 0.0;   ///< NaN: none
-    double x = 0.0, y = 0.0;                 ///< where the mark's own response is largest
-    int x1 = 0, x2 = 0, y1 = 0, y2 = 0;      ///< bounding box, inclusive
-    double strength_e = 0.0, error_e = 0.0;  ///< total, 1 sigma
-    double peak_e = 0.0;                     ///< largest per pixel
+        status;                               ///< status: measured | unmeasured
+    double source_x = 0.0, source_y = 0.0;    ///< NaN: none
+    double x = 0.0, y = 0.0;                  ///< where the mark's own response is largest
+    int x1 = 0, x2 = 0, y1 = 0, y2 = 0;       ///< bounding box, inclusive
+    double strength_e = 0.0, error_e = 0.0;   ///< total, 1 sigma
+    double peak_e = 0.0, peak_error_e = 0.0;  ///< largest per pixel, 1 sigma
     double response = 0.0, response_error = 0.0;
     double significance = 0.0;  ///< |strength| / error
     std::int64_t area_px = 0;

@@ -77,6 +77,7 @@ MarkRow row_of(const Mark& mark, const MarkOutcome& outcome) {
     row.strength_e = mark.strength_e;
     row.error_e = mark.strength_error_e;
     row.peak_e = outcome.peak_e;
+    row.peak_error_e = outcome.peak_error_e;
     row.response = outcome.response;
     row.response_error = outcome.response_error;
     row.significance = mark.strength_error_e > 0.0
@@ -91,7 +92,7 @@ MarkRow row_without_place(const PixelBox& box) {
     constexpr double kNone = std::numeric_limits<double>::quiet_NaN();
     MarkRow row;
     row.source_x = row.source_y = row.x = row.y = kNone;
-    row.peak_e = row.response = row.response_error = row.significance = kNone;
+    row.peak_e = row.peak_error_e = row.response = row.response_error = row.significance = kNone;
     set_bounds(box, row);
     return row;
 }

@@ -141,7 +141,12 @@ std::optional<std::string> places_wrong(const std::vector<RequiredEcho>& echoes)
     if (dx.size() >= kEchoesForPlace) {
         const double x = median(dx);
         const double y = median(dy);
-        if (std::max(std::abs(x), std::abs(y)) >= kMisplacedPx) {
+        std::size_t shared = 0;
+        for (std::size_t i = 0; i < dx.size(); ++i) {
+            shared += std::abs(dx[i] - x) <= 0.5 && std::abs(dy[i] - y) <= 0.5 ? 1 : 0;
+        }
+        if (std::max(std::abs(x), std::abs(y)) >= kMisplacedPx &&
+            static_cast<double>(shared) >= kSharedOffset * static_cast<double>(dx.size())) {
             return fmt::format("marks off by ({:+.1f}, {:+.1f}) px over {} echoes", x, y,
                                dx.size());
         }

@@ -16,9 +16,11 @@ inline constexpr double kGainTolerance = 0.05;
 /// A slope of one amplifier or pair is wrong where it is off by its tolerance and this many errors.
 inline constexpr double kWrongByErrors = 5.0;
 inline constexpr double kPairTolerance = 0.25;
-/// A pair is misplaced where the median offset of its echoes, two or more, reaches this.
+/// A pair is misplaced where the median offset of its echoes, three or more, reaches this, and most
+/// of them share it: other echoes nearby move single ones, each its own way.
 inline constexpr double kMisplacedPx = 0.75;
-inline constexpr int kEchoesForPlace = 2;
+inline constexpr int kEchoesForPlace = 3;
+inline constexpr double kSharedOffset = 0.6;  ///< fraction that must lie within half a pixel of it
 /// A pair is missed where fewer than half of its required echoes, three or more, are found.
 inline constexpr int kEchoesForMissed = 3;
 
