@@ -189,7 +189,7 @@ void require_free_name(const YamlValue& value, const std::string& id,
 
 std::string read_identifier(const YamlValue& value) {
     constexpr std::size_t kLongest = 32;
-    const std::string text = value.text(kLongest);
+    std::string text = value.text(kLongest);
     const bool plain = std::all_of(text.begin(), text.end(), [](unsigned char c) {
         return (c >= '0' && c <= '9') || (c >= 'A' && c <= 'Z') || (c >= 'a' && c <= 'z') ||
                c == '_' || c == '.' || c == '+' || c == '-';

@@ -89,7 +89,7 @@ int read_sign(const YamlValue& value) {
 /// A header keyword as FITS 4.0 allows it, or one in the HIERARCH convention.
 std::string read_keyword(const YamlValue& value) {
     constexpr std::size_t kLongest = 68;
-    const std::string text = value.text(kLongest);
+    std::string text = value.text(kLongest);
     const bool standard =
         text.size() <= 8 && std::all_of(text.begin(), text.end(), [](unsigned char c) {
             return (c >= '0' && c <= '9') || (c >= 'A' && c <= 'Z') || c == '_' || c == '-';
@@ -229,7 +229,7 @@ std::string without_placeholders(const YamlValue& value, const std::string& text
 
 /// The name of a keyword that holds a section, or the section itself.
 std::string read_section_source(const YamlValue& value) {
-    const std::string text = value.text(68);
+    std::string text = value.text(68);
     if (text.front() == '[') {
         if (!parse_section(text)) {
             value.refuse("a section \"[x1:x2,y1:y2]\"");
@@ -413,7 +413,7 @@ Camera load_camera(const std::string& path) {
 
     std::string digests = file.digest();
     const auto table_path = [&](const YamlValue& name) {
-        const std::string table = resolved_beside(path, name.text(4096));
+        std::string table = resolved_beside(path, name.text(4096));
         digests += fmt::format(" {}", file_digest(InputFile(table)));
         return table;
     };

@@ -418,7 +418,7 @@ std::optional<YamlValue> YamlMapping::optional(std::string_view key) const {
     return value;
 }
 
-YamlFile::YamlFile(std::string path) : YamlFile(path, read_text(path, kLargestFile)) {}
+YamlFile::YamlFile(const std::string& path) : YamlFile(path, read_text(path, kLargestFile)) {}
 
 YamlFile::YamlFile(std::string path, const std::string& text)
     : path_(std::move(path)), digest_(bytes_digest(std::as_bytes(std::span(text)))) {

@@ -119,7 +119,7 @@ public:
     /// Throws InputError: not a regular file, over 1 MiB or 64 KiB in a line, not UTF-8, not YAML,
     /// nested deeper than 32, over 200,000 values or 10,000 keys of one mapping, or ambiguous as
     /// described above.
-    explicit YamlFile(std::string path);
+    explicit YamlFile(const std::string& path);
     /// The same for text in memory; `path` serves the messages.
     YamlFile(std::string path, const std::string& text);
     YamlFile(const YamlFile&) = delete;
