@@ -22,7 +22,7 @@ void keep_usable_wcs(const Camera& camera, ExposureDigest& digest) {
                 Wcs(cards, detector.raw_file, "WCS of " + camera.detectors[d].id).cards();
         } catch (const InputError& error) {
             digest.header.notes.push_back(
-                fmt::format("the header's WCS is not used: {}", error.what()));
+                fmt::format("WCS of the header not used: {}", error.what()));
         }
     }
 }

@@ -418,7 +418,7 @@ void refine_pointing(const Camera& camera, const StarList* stars, ExposureDigest
                 accept(camera, search, *match, digest);
                 return;
             }
-            wcs_problem = "; the header's WCS does not fit the stars";
+            wcs_problem = "; the WCS in the header does not fit the stars";
         }
     } catch (const InputError& error) {
         wcs_problem = fmt::format("; {}", error.what());

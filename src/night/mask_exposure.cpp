@@ -54,6 +54,13 @@ struct PixelFractions {
     }
 };
 
+/// Prose for a header card. Some readers lose what follows a doubled apostrophe in a string that
+/// goes on in CONTINUE cards, so quotes within prose are double ones.
+std::string prose(std::string text) {
+    std::replace(text.begin(), text.end(), '\'', '"');
+    return text;
+}
+
 std::vector<MaskCard> primary_cards(const Site& site, const PredictorsInForce& predictors,
                                     const ExposureDigest& digest, const std::string& raw_file) {
     const ExposureHeader& header = digest.header;
@@ -82,12 +89,12 @@ std::vector<MaskCard> primary_cards(const Site& site, const PredictorsInForce& p
     }
     number = 0;
     for (const std::string& note : header.notes) {
-        cards.push_back({fmt::format("NOTE{}", ++number), note, ""});
+        cards.push_back({fmt::format("NOTE{}", ++number), prose(note), ""});
     }
     const Pointing& pointing = digest.pointing;
     cards.push_back({"POINTING",
                      pointing.refined ? fmt::format("refined on {} stars", pointing.matched_stars)
-                                      : "from the header: " + pointing.reason,
+                                      : "from the header: " + prose(pointing.reason),
                      "source of the coordinates"});
     return cards;
 }
