@@ -7,7 +7,6 @@ cd "$(dirname -- "${BASH_SOURCE[0]}")/.."
 preset=$1
 build=build/$preset
 export ASAN_OPTIONS=detect_leaks=1:abort_on_error=0 UBSAN_OPTIONS=print_stacktrace=1
-export TSAN_OPTIONS="suppressions=$PWD/tests/tsan_suppressions.txt ignore_noninstrumented_modules=1"
 case $preset in
     asan-ubsan) rooms=(core raster camera sky exposure crosstalk mask score simulate io contract) ;;
     tsan) rooms=(core exposure crosstalk mask contract) ;;
