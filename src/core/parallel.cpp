@@ -1,5 +1,6 @@
 #include "core/parallel.h"
 
+#include <tbb/global_control.h>
 #include <tbb/parallel_for.h>
 #include <tbb/task_arena.h>
 
@@ -25,6 +26,9 @@ void parallel_for(int count, int threads, const std::function<void(int)>& body) 
         run();  // already inside an arena of this size: share its threads
         return;
     }
+    // More threads than cores is the caller's wish; without this TBB would refuse, and say so.
+    const tbb::global_control allowed(tbb::global_control::max_allowed_parallelism,
+                                      static_cast<std::size_t>(threads));
     tbb::task_arena arena(threads);
     arena.execute(run);
 }

@@ -83,7 +83,7 @@ struct DetectorDigest {
     std::vector<PixelRun>
         bleed;  ///< charge spilled along columns from a saturated core, detector pixels
     std::vector<MeasuredStar> stars;      ///< brightest first
-    std::vector<std::string> header_wcs;  ///< cards of a usable WCS in the raw header
+    std::vector<std::string> header_wcs;  ///< cards of the raw header's WCS; none: not usable
 };
 
 struct ExposureDigest {

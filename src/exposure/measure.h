@@ -23,6 +23,10 @@ DetectorDigest measure_detector(const Camera& camera, int detector, DetectorFram
 /// Detectors without a PSF of their own take the median of the others' (source: neighbours).
 void share_psf(ExposureDigest& digest);
 
+/// Of the raw headers' cards keeps those of a coordinate system that can be used. One that cannot
+/// (TNX, a damaged card) is dropped, and digest.header.notes says why: crosstalk needs no sky.
+void keep_usable_wcs(const Camera& camera, ExposureDigest& digest);
+
 /// Shift and rotation from the listed stars (header WCS first, if it already fits). Sets
 /// digest.pointing and digest.transparency; states why where too few stars match.
 void refine_pointing(const Camera& camera, const StarList* stars, ExposureDigest& digest);

@@ -36,8 +36,8 @@ bool serves(const std::string& product, const std::string& exposure) {
 
 bool in_force_for(const Product& product, const Camera& camera, const ExposureHeader& header) {
     return product.camera == camera.name && serves(product.mode, header.mode) &&
-           serves(product.filter, header.filter) && product.valid_from <= header.start &&
-           header.start < product.valid_to;
+           serves(product.filter, header.filter) && product.valid_from.days <= header.start.days &&
+           header.start.days < product.valid_to.days;
 }
 
 }  // namespace

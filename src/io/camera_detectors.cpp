@@ -6,6 +6,8 @@
 #include <fmt/format.h>
 #include <set>
 
+#include "io/fits_cards.h"
+
 namespace straymark::io {
 namespace {
 
@@ -26,13 +28,6 @@ struct Layout {
     RowRead read = RowRead::transfer;
     std::vector<Amplifier> amplifiers;  ///< clock not yet known
 };
-
-std::string upper_case(std::string text) {
-    std::transform(text.begin(), text.end(), text.begin(), [](unsigned char c) {
-        return c >= 'a' && c <= 'z' ? static_cast<char>(c - 'a' + 'A') : static_cast<char>(c);
-    });
-    return text;
-}
 
 /// A FITS section, 1-based and inclusive, inside a detector; 0-based and half-open here.
 PixelBox read_section(const YamlValue& value, int width, int height) {

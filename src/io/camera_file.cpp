@@ -12,6 +12,7 @@
 #include "io/camera_detectors.h"
 #include "io/camera_tables.h"
 #include "io/files.h"
+#include "io/fits_cards.h"
 #include "io/fits_section.h"
 #include "io/yaml.h"
 
@@ -154,8 +155,8 @@ std::map<ExposureType, std::vector<std::string>> read_types(const YamlValue& val
         }
         for (const YamlValue& item : list->items(1, 64)) {
             types[type].push_back(item.text(68));
-            if (!seen.insert(types[type].back()).second) {
-                item.refuse("each value of the type keyword once");
+            if (!seen.insert(upper_case(types[type].back())).second) {
+                item.refuse("each value of the type keyword once (upper and lower case are one)");
             }
         }
     }

@@ -7,6 +7,7 @@
 #include <limits>
 #include <string_view>
 #include <system_error>
+#include <tuple>
 #include <utility>
 
 #include "core/error.h"
@@ -63,7 +64,6 @@ void check_format(const InputFile& file, const FitsHeader& header) {
 struct DatedId {
     double start_mjd = std::numeric_limits<double>::infinity();
     std::string id;
-    friend auto operator<=>(const DatedId&, const DatedId&) = default;
 };
 
 DatedId dated_id(const std::string& path, const std::string& stem) {
@@ -131,8 +131,11 @@ std::vector<std::string> DigestFolder::ids() const {
     if (error && error != std::errc::no_such_file_or_directory) {
         throw SystemError(folder_, "list", error.value());
     }
-    std::sort(dated.begin(), dated.end());
+    std::sort(dated.begin(), dated.end(), [](const DatedId& a, const DatedId& b) {
+        return std::tie(a.start_mjd, a.id) < std::tie(b.start_mjd, b.id);
+    });
     std::vector<std::string> ids;
+    ids.reserve(dated.size());
     for (DatedId& entry : dated) {
         ids.push_back(std::move(entry.id));
     }

@@ -249,6 +249,7 @@ const auto kAmplifierLists = std::tuple{ListOf{"RUNS", "runs", [](auto& a) -> au
 template <typename Record, typename Get>
 TableColumn count_column(const char* name, const std::vector<const Record*>& records, Get get) {
     std::vector<std::int64_t> counts;
+    counts.reserve(records.size());
     for (const Record* record : records) {
         counts.push_back(static_cast<std::int64_t>(get(*record).size()));
     }
@@ -284,6 +285,7 @@ void append_items(std::vector<FitsUnit>& units, const std::vector<const Record*>
 template <typename Record>
 std::vector<const Record*> pointers_to(const std::vector<Record>& records) {
     std::vector<const Record*> pointers;
+    pointers.reserve(records.size());
     for (const Record& record : records) {
         pointers.push_back(&record);
     }

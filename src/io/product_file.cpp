@@ -132,7 +132,7 @@ Product described_product(const std::string& path, const FitsHeader& header) {
         throw InputError({path, "HDU 0 (primary), keyword CAMERA", "no name",
                           "the name of the camera that was calibrated", ""});
     }
-    if (product.valid_from >= product.valid_to) {
+    if (product.valid_from.days >= product.valid_to.days) {
         throw InputError(
             {path, "HDU 0 (primary), keywords MJDFROM and MJDTO",
              fmt::format("from {} to {}", product.valid_from.days, product.valid_to.days),

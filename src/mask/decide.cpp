@@ -232,9 +232,12 @@ std::int64_t flagged_in(const DetectorMask& mask, const PixelBox& box, ArtifactB
     const PixelBox inside = box.intersected({0, 0, mask.width, mask.height});
     std::int64_t count = 0;
     for (int y = inside.y0; y < inside.y1; ++y) {
-        const auto row = mask.bits.begin() + static_cast<std::ptrdiff_t>(y) * mask.width;
-        count += std::count_if(row + inside.x0, row + inside.x1,
-                               [either](MaskPixel pixel) { return (pixel & either) != 0; });
+        const MaskPixel* row = mask.bits.data() + static_cast<std::ptrdiff_t>(y) * mask.width;
+        int in_row = 0;
+        for (int x = inside.x0; x < inside.x1; ++x) {
+            in_row += (row[x] & either) != 0 ? 1 : 0;
+        }
+        count += in_row;
     }
     return count;
 }
@@ -254,8 +257,8 @@ public:
         for_each_with_worker<TileWorker>(
             static_cast<int>(tiles.size()), [&] { return TileWorker(kernel_, whole(), noise_); },
             [&](TileWorker& worker, std::size_t i) {
-                counts[i] = worker.paint(tiles[i], by_tile[i], marks.faint.get(), threshold,
-                                         bits_of(kind), mask_.bits);
+                counts[i] = worker.paint(tiles[i], by_tile[i], marks.faint.get(),
+                                         {threshold, bits_of(kind), mask_.bits});
             });
         for (const TileCounts& tile : counts) {
             outcome.flagged_px += tile.flagged;

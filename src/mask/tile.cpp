@@ -195,16 +195,11 @@ void TileWorker::answer_all(double threshold, double quietest_noise_e) {
     kernel_.answer_bound(spread_.in, spread_cut, spread_.out, scratch_);
 }
 
-bool TileWorker::row_could_matter(const PixelBox& part, int y, double scale,
-                                  double threshold) const {
+bool TileWorker::stretch_could_matter(int x0, int x1, int y, float limit) const {
     const auto first =
         static_cast<std::size_t>(y - tile_.y0) * static_cast<std::size_t>(tile_.width()) +
-        static_cast<std::size_t>(part.x0 - tile_.x0);
-    // Below this, signal and errors with all that their cuts left out miss the threshold.
-    const auto limit = static_cast<float>(
-        threshold * (1.0 - (any_unmeasured_ ? 2.0 : 1.0) * kSignalSlack - 2.0 * kSpreadSlack) /
-        scale);
-    const auto count = static_cast<std::size_t>(part.width());
+        static_cast<std::size_t>(x0 - tile_.x0);
+    const auto count = static_cast<std::size_t>(x1 - x0);
     unsigned reached = 0;
     for (std::size_t i = first; i < first + count; ++i) {
         float most = std::fabs(measured_.answer[i]) + 2.0F * spread_.answer[i];
@@ -236,38 +231,48 @@ TileWorker::Decision TileWorker::decide_pixel(int x, int y, double scale, double
     return decide_exactly(x, y, scale, threshold, spread + kSpreadSlack * threshold);
 }
 
-TileCounts TileWorker::paint_patch(const NoisePatch& patch, double threshold, ArtifactBits bits,
-                                   std::span<MaskPixel> mask) const {
+void TileWorker::paint_stretch(int x0, int x1, int y, double scale, const PaintRule& rule,
+                               TileCounts& counts) const {
+    for (int x = x0; x < x1; ++x) {
+        const Decision decision = decide_pixel(x, y, scale, rule.threshold);
+        MaskPixel set = 0;
+        if (decision.flagged) {
+            set = value_of(decision.negative ? rule.bits.negative : rule.bits.positive);
+            ++counts.flagged;
+        }
+        if (decision.marginal) {
+            set = static_cast<MaskPixel>(set | value_of(MaskBit::marginal));
+            ++counts.marginal;
+        }
+        if (decision.unassessed) {
+            set = static_cast<MaskPixel>(set | value_of(rule.bits.unassessed));
+            ++counts.unassessed;
+        }
+        if (set != 0) {
+            MaskPixel& pixel =
+                rule.mask[static_cast<std::size_t>(y) * static_cast<std::size_t>(whole_.width()) +
+                          static_cast<std::size_t>(x)];
+            pixel = static_cast<MaskPixel>(pixel | set);
+        }
+    }
+}
+
+TileCounts TileWorker::paint_patch(const NoisePatch& patch, const PaintRule& rule) const {
+    constexpr int kStretch = 32;
     TileCounts counts;
     const PixelBox part = patch.section.intersected(tile_);
     if (part.empty() || !(patch.noise_e > 0.0)) {
         return counts;
     }
     const double scale = kernel_.scale(patch.noise_e);
+    // Below this, signal and errors with all that their cuts left out miss the threshold.
+    const double left_out = (any_unmeasured_ ? 2.0 : 1.0) * kSignalSlack + 2.0 * kSpreadSlack;
+    const auto limit = static_cast<float>(rule.threshold * (1.0 - left_out) / scale);
     for (int y = part.y0; y < part.y1; ++y) {
-        if (!row_could_matter(part, y, scale, threshold)) {
-            continue;
-        }
-        for (int x = part.x0; x < part.x1; ++x) {
-            const Decision decision = decide_pixel(x, y, scale, threshold);
-            MaskPixel set = 0;
-            if (decision.flagged) {
-                set = value_of(decision.negative ? bits.negative : bits.positive);
-                ++counts.flagged;
-            }
-            if (decision.marginal) {
-                set = static_cast<MaskPixel>(set | value_of(MaskBit::marginal));
-                ++counts.marginal;
-            }
-            if (decision.unassessed) {
-                set = static_cast<MaskPixel>(set | value_of(bits.unassessed));
-                ++counts.unassessed;
-            }
-            if (set != 0) {
-                MaskPixel& pixel =
-                    mask[static_cast<std::size_t>(y) * static_cast<std::size_t>(whole_.width()) +
-                         static_cast<std::size_t>(x)];
-                pixel = static_cast<MaskPixel>(pixel | set);
+        for (int x0 = part.x0; x0 < part.x1; x0 += kStretch) {
+            const int x1 = std::min(x0 + kStretch, part.x1);
+            if (stretch_could_matter(x0, x1, y, limit)) {
+                paint_stretch(x0, x1, y, scale, rule, counts);
             }
         }
     }
@@ -275,8 +280,7 @@ TileCounts TileWorker::paint_patch(const NoisePatch& patch, double threshold, Ar
 }
 
 TileCounts TileWorker::paint(const PixelBox& tile, std::span<const Mark* const> marks,
-                             const FaintSum* faint, double threshold, ArtifactBits bits,
-                             std::span<MaskPixel> mask) {
+                             const FaintSum* faint, const PaintRule& rule) {
     TileCounts counts;
     if (marks.empty() && faint == nullptr) {
         return counts;
@@ -293,12 +297,12 @@ TileCounts TileWorker::paint(const PixelBox& tile, std::span<const Mark* const> 
         add_faint(*faint);
     }
     render_marks(marks);
-    if (!could_matter(threshold, quietest)) {
+    if (!could_matter(rule.threshold, quietest)) {
         return counts;
     }
-    answer_all(threshold, quietest);
+    answer_all(rule.threshold, quietest);
     for (const NoisePatch& patch : noise_) {
-        counts += paint_patch(patch, threshold, bits, mask);
+        counts += paint_patch(patch, rule);
     }
     return counts;
 }

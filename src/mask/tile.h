@@ -30,6 +30,13 @@ struct TileCounts {
     }
 };
 
+/// What to compare with, and which bits to set where.
+struct PaintRule {
+    double threshold = 1.0;
+    ArtifactBits bits;
+    std::span<MaskPixel> mask;  ///< of the whole detector, row by row
+};
+
 /// Applies the decision rule to one tile at a time. Keeps its buffers from tile to tile; one worker
 /// for each thread.
 class TileWorker {
@@ -39,8 +46,7 @@ public:
 
     /// Sets the bits of one artifact over `tile`. marks: all that could reach the tile.
     TileCounts paint(const PixelBox& tile, std::span<const Mark* const> marks,
-                     const FaintSum* faint, double threshold, ArtifactBits bits,
-                     std::span<MaskPixel> mask);
+                     const FaintSum* faint, const PaintRule& rule);
 
 private:
     /// One rendered signal: a mark's own, or one of its error modes.
@@ -71,10 +77,10 @@ private:
     [[nodiscard]] double quietest_noise() const;
     [[nodiscard]] bool could_matter(double threshold, double quietest_noise_e) const;
     void answer_all(double threshold, double quietest_noise_e);
-    TileCounts paint_patch(const NoisePatch& patch, double threshold, ArtifactBits bits,
-                           std::span<MaskPixel> mask) const;
-    [[nodiscard]] bool row_could_matter(const PixelBox& part, int y, double scale,
-                                        double threshold) const;
+    TileCounts paint_patch(const NoisePatch& patch, const PaintRule& rule) const;
+    void paint_stretch(int x0, int x1, int y, double scale, const PaintRule& rule,
+                       TileCounts& counts) const;
+    [[nodiscard]] bool stretch_could_matter(int x0, int x1, int y, float limit) const;
     [[nodiscard]] Decision decide_pixel(int x, int y, double scale, double threshold) const;
     /// error_bound: at least one sigma of the response here.
     [[nodiscard]] Decision decide_exactly(int x, int y, double scale, double threshold,

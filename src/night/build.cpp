@@ -61,6 +61,9 @@ public:
             }
             ExposureDigest digest = measure(planned, predictors);
             digest.input_digests = inputs;
+            const auto known = static_cast<std::ptrdiff_t>(planned.header.notes.size());
+            report.notes.insert(report.notes.end(), digest.header.notes.begin() + known,
+                                digest.header.notes.end());
             ports_.digests.save(digest);
             write(digest, predictors, key, report);
         });
@@ -163,6 +166,7 @@ private:
             }
         }
         share_psf(digest);
+        keep_usable_wcs(camera, digest);
         refine_pointing(camera, ports_.stars, digest);
         return digest;
     }

@@ -27,9 +27,6 @@ constexpr int kZoom = 4;
 constexpr int kCloseUpSide = kCloseUpPx * kZoom;
 constexpr int kWidth = 2 * kMargin + 2 * kOverviewSide + kGap;
 constexpr int kOverviewTop = 92;
-constexpr int kCloseUpTop = kOverviewTop + kOverviewSide + 44;
-constexpr int kLegendTop = kCloseUpTop + 2 * kCloseUpSide + 10 + 24;
-constexpr int kHeight = kLegendTop + 50;
 
 constexpr std::array<Colour, static_cast<std::size_t>(PixelClass::count)> kClassColours = {{
     kDark,            // clear
@@ -103,33 +100,55 @@ Colour response_colour_of_block(const FigureDetector& detector, const PixelBox& 
     return response_colour(largest);
 }
 
-/// Draws a detector into `panel`, first row at the bottom.
+/// Draws a detector into `panel`, first row at the bottom: each dot a square block of pixels where
+/// the detector is larger than the panel, each pixel a square of dots where it is smaller.
 template <typename BlockColour>
 void draw_detector(Canvas& canvas, const PixelBox& panel, const FigureDetector& detector,
                    BlockColour block_colour) {
-    const int shrink = std::max({1, (detector.truth.width + panel.width() - 1) / panel.width(),
-                                 (detector.truth.height + panel.height() - 1) / panel.height()});
-    for (int j = 0; j * shrink < detector.truth.height; ++j) {
-        for (int i = 0; i * shrink < detector.truth.width; ++i) {
+    const int width = detector.truth.width;
+    const int height = detector.truth.height;
+    const int shrink = std::max((width + panel.width() - 1) / panel.width(),
+                                (height + panel.height() - 1) / panel.height());
+    const int zoom = shrink > 1 ? 1 : std::min(panel.width() / width, panel.height() / height);
+    for (int j = 0; j * shrink < height; ++j) {
+        for (int i = 0; i * shrink < width; ++i) {
             const PixelBox block =
                 PixelBox{i * shrink, j * shrink, (i + 1) * shrink, (j + 1) * shrink}.intersected(
-                    {0, 0, detector.truth.width, detector.truth.height});
-            canvas.set(panel.x0 + i, panel.y1 - 1 - j, block_colour(detector, block));
+                    {0, 0, width, height});
+            const int left = panel.x0 + i * zoom;
+            const int bottom = panel.y1 - j * zoom;
+            canvas.fill({left, bottom - zoom, left + zoom, bottom}, block_colour(detector, block));
         }
     }
     canvas.text(panel.x0 + 4, panel.y0 + 4, detector.truth.id, kPage);
 }
 
+/// Where the parts of a page lie; detectors in rows, as many as fit a square.
+struct Layout {
+    explicit Layout(std::size_t detectors) {
+        while (columns * columns < static_cast<int>(detectors)) {
+            ++columns;
+        }
+        cell = kOverviewSide / columns;
+        const int rows = (static_cast<int>(detectors) + columns - 1) / columns;
+        close_up_top = kOverviewTop + rows * cell + 44;
+        legend_top = close_up_top + 2 * kCloseUpSide + 34;
+        height = legend_top + 50;
+    }
+    int columns = 1;
+    int cell = 0;
+    int close_up_top = 0;
+    int legend_top = 0;
+    int height = 0;
+};
+
 template <typename BlockColour>
-void draw_overview(Canvas& canvas, int left, std::span<const FigureDetector> detectors,
-                   BlockColour block_colour) {
-    const int columns = static_cast<int>(
-        std::ceil(std::sqrt(static_cast<double>(std::max<std::size_t>(1, detectors.size())))));
-    const int cell = kOverviewSide / columns;
+void draw_overview(Canvas& canvas, const Layout& layout, int left,
+                   std::span<const FigureDetector> detectors, BlockColour block_colour) {
     for (std::size_t i = 0; i < detectors.size(); ++i) {
-        const int x = left + static_cast<int>(i) % columns * cell;
-        const int y = kOverviewTop + static_cast<int>(i) / columns * cell;
-        const PixelBox panel{x, y, x + cell - 2, y + cell - 2};
+        const int x = left + static_cast<int>(i) % layout.columns * layout.cell;
+        const int y = kOverviewTop + static_cast<int>(i) / layout.columns * layout.cell;
+        const PixelBox panel{x, y, x + layout.cell - 2, y + layout.cell - 2};
         canvas.fill(panel, kDark);
         draw_detector(canvas, panel, detectors[i], block_colour);
     }
@@ -153,21 +172,22 @@ void draw_close_up(Canvas& canvas, int left, int top, const CloseUp& view,
     }
 }
 
-void draw_close_ups(Canvas& canvas, std::span<const FigureDetector> detectors) {
+void draw_close_ups(Canvas& canvas, const Layout& layout,
+                    std::span<const FigureDetector> detectors) {
     const std::vector<CloseUp> views = close_ups(detectors);
     constexpr int kStep = (kWidth - 2 * kMargin) / kMostCloseUps;
     for (std::size_t i = 0; i < views.size(); ++i) {
         const CloseUp& view = views[i];
         const int left = kMargin + static_cast<int>(i) * kStep;
-        canvas.text(left, kCloseUpTop - 24, fmt::format("{}, {:+.1f}", view.reason, view.response),
-                    kInk);
-        canvas.text(left, kCloseUpTop - 12,
+        canvas.text(left, layout.close_up_top - 24,
+                    fmt::format("{}, {:+.1f}", view.reason, view.response), kInk);
+        canvas.text(left, layout.close_up_top - 12,
                     fmt::format("{} > {}", view.echo->source, view.echo->victim), kFaintInk);
-        draw_close_up(canvas, left, kCloseUpTop, view,
+        draw_close_up(canvas, left, layout.close_up_top, view,
                       [](const FigureDetector& detector, std::size_t index) {
                           return response_colour(static_cast<double>(detector.response[index]));
                       });
-        draw_close_up(canvas, left, kCloseUpTop + kCloseUpSide + 6, view,
+        draw_close_up(canvas, left, layout.close_up_top + kCloseUpSide + 6, view,
                       [](const FigureDetector& detector, std::size_t index) {
                           return kClassColours[static_cast<std::size_t>(class_of(detector, index))];
                       });
@@ -187,26 +207,24 @@ void draw_headline(Canvas& canvas, const NightScore& night, const std::string& e
     canvas.text(kMargin + kOverviewSide + kGap, kOverviewTop - 22, "the mask against it", kInk, 2);
 }
 
-void draw_legend(Canvas& canvas) {
+void draw_legend(Canvas& canvas, int top) {
     constexpr int kSwatch = 12;
     constexpr int kRow = 20;
-    canvas.text(kMargin, kLegendTop + 3, "response -20", kInk);
+    canvas.text(kMargin, top + 3, "response -20", kInk);
     constexpr int kBarLeft = kMargin + 84;
     constexpr int kBarHalf = 150;
     for (int i = -kBarHalf; i <= kBarHalf; ++i) {
         // The bar is even in the colour's own scale.
         const double level = static_cast<double>(std::abs(i)) / kBarHalf;
         const double strength = 0.5 * std::sinh(level * std::asinh(40.0));
-        canvas.fill({kBarLeft + kBarHalf + i, kLegendTop, kBarLeft + kBarHalf + i + 1,
-                     kLegendTop + kSwatch},
+        canvas.fill({kBarLeft + kBarHalf + i, top, kBarLeft + kBarHalf + i + 1, top + kSwatch},
                     response_colour(i < 0 ? -strength : strength));
     }
-    canvas.text(kBarLeft + 2 * kBarHalf + 8, kLegendTop + 3, "+20", kInk);
+    canvas.text(kBarLeft + 2 * kBarHalf + 8, top + 3, "+20", kInk);
     int x = kMargin;
     for (std::size_t i = 1; i < kClassColours.size(); ++i) {
-        canvas.fill({x, kLegendTop + kRow, x + kSwatch, kLegendTop + kRow + kSwatch},
-                    kClassColours[i]);
-        canvas.text(x + kSwatch + 6, kLegendTop + kRow + 3, kClassTexts[i], kInk);
+        canvas.fill({x, top + kRow, x + kSwatch, top + kRow + kSwatch}, kClassColours[i]);
+        canvas.text(x + kSwatch + 6, top + kRow + 3, kClassTexts[i], kInk);
         x += kSwatch + 6 + Canvas::text_width(kClassTexts[i].size()) + 24;
     }
 }
@@ -215,12 +233,13 @@ void draw_legend(Canvas& canvas) {
 
 Canvas figure_of(const NightScore& night, const std::string& exposure,
                  std::span<const FigureDetector> detectors) {
-    Canvas canvas(kWidth, kHeight, kPage);
+    const Layout layout(detectors.size());
+    Canvas canvas(kWidth, layout.height, kPage);
     draw_headline(canvas, night, exposure);
-    draw_overview(canvas, kMargin, detectors, response_colour_of_block);
-    draw_overview(canvas, kMargin + kOverviewSide + kGap, detectors, class_colour_of_block);
-    draw_close_ups(canvas, detectors);
-    draw_legend(canvas);
+    draw_overview(canvas, layout, kMargin, detectors, response_colour_of_block);
+    draw_overview(canvas, layout, kMargin + kOverviewSide + kGap, detectors, class_colour_of_block);
+    draw_close_ups(canvas, layout, detectors);
+    draw_legend(canvas, layout.legend_top);
     return canvas;
 }
 

@@ -64,6 +64,7 @@ int main(int argc, char** argv) {
                 site.camera, d, *frame, {digest_floor_sigma(predictors)}, kThreads);
         }
         share_psf(digest);
+        keep_usable_wcs(site.camera, digest);
         refine_pointing(site.camera, ports.stars, digest);
         paint(site, predictors, digest, kThreads, mask);
     });

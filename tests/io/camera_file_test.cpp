@@ -430,7 +430,7 @@ TEST_CASE("types, pier side and suffixes need their counterparts") {
                    "types: {sky: [OBJECT, SKY], dark: [DARK], flat: [FLAT], focus: [FOCUS]}\n", ""),
                Catch::Contains("a key 'types'"));
     CHECK_THAT(message_of_change("sky: [OBJECT, SKY], ", ""), Catch::Contains("a key 'sky'"));
-    CHECK_THAT(message_of_change("dark: [DARK]", "dark: [SKY]"),
+    CHECK_THAT(message_of_change("dark: [DARK]", "dark: [Sky]"),
                Catch::Contains("each value of the type keyword once"));
     CHECK_THAT(message_of_change("mount: altaz", "mount: equatorial\n  pier_flipped: W"),
                Catch::Contains("headers.pier_side"));
@@ -487,4 +487,20 @@ TEST_CASE("a camera file that is not there, or a pipe, is refused") {
     CHECK_THROWS_AS(load_camera("/dev/null"), InputError);
     CHECK_THAT(message_of_change("format: straymark-camera/1", "format: straymark-camera/2"),
                Catch::Contains("update the program"));
+}
+
+TEST_CASE("the documentation's example is a good camera file") {
+    const std::string page = contents(STRAYMARK_SOURCE "/docs/camera_file.md");
+    const auto block = [&page](const std::string& opening) {
+        const std::size_t begin = page.find(opening);
+        REQUIRE(begin != std::string::npos);
+        const std::size_t first = page.find('\n', begin) + 1;
+        return page.substr(first, page.find("```", first) - first);
+    };
+    const TemporaryFolder folder;
+    folder.write("small_amplifiers.csv", block("```csv\ndetector,"));
+    const Camera camera =
+        load_camera(folder.write("small.yaml", block("```yaml\nformat: straymark-camera/1")));
+    CHECK(camera.detectors.size() == 1);
+    CHECK(camera.detectors[0].amplifiers[1].read_noise_e == 6.1);
 }

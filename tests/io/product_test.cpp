@@ -1,6 +1,7 @@
 #include <bit>
 #include <catch2/catch.hpp>
 #include <cmath>
+#include <filesystem>
 #include <fmt/format.h>
 #include <fstream>
 #include <limits>
@@ -273,6 +274,18 @@ TEST_CASE("What is wrong with a product is said") {
         write_bytes(path, std::string(100000, '['));
         CHECK_THROWS_AS(io::read_product(path), InputError);
     }
+}
+
+TEST_CASE("Files that kill careless readers are refused as products") {
+    // tests/fault/hostile/SOURCE.md tells what each of them does.
+    std::size_t refused = 0;
+    for (const auto& entry : std::filesystem::directory_iterator(
+             std::filesystem::path(STRAYMARK_TEST_DATA) / "fault" / "hostile")) {
+        INFO(entry.path().string());
+        CHECK_THROWS_AS(io::read_product(entry.path().string()), InputError);
+        ++refused;
+    }
+    CHECK(refused >= 7);
 }
 
 TEST_CASE("The format of a product is told without reading the rest") {

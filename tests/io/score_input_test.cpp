@@ -91,8 +91,8 @@ void write_mask(const std::string& path, const MaskPlan& plan = {}) {
     file.column("y1", std::vector<int>(3, 3));
     file.column("y2", std::vector<int>(3, 5));
     file.column("strength_e", std::vector<double>(3, -31.0));
-    file.column("peak_e", std::vector<double>(3, -6.2));
     file.column("error_e", std::vector<double>(3, 0.5));
+    file.column("peak_e", std::vector<double>(3, -6.2));
     file.column("area_px", std::vector<int>(3, 1));
     file.column("count", std::vector<int>{1, 1, 250});
     file.table("DETECTION");
@@ -214,7 +214,7 @@ TEST_CASE("A mask is made ready: bits by name, single marks of the kind, amplifi
     CHECK(d1.marks[0].y_px == 3.0);
     CHECK(d1.marks[0].box == PixelBox{3, 2, 6, 5});
     CHECK(d1.marks[0].peak_e == -6.2);
-    CHECK(d1.marks[0].error_e == Approx(0.1));  // the total's relative error, 0.5 / 31
+    CHECK(d1.marks[0].error_e == Approx(6.2 * 0.5 / 31.0));  // of the whole, in proportion
     REQUIRE(d1.amplifiers.size() == 2);
     CHECK(d1.amplifiers[0].name == "d1/a01");
     CHECK(d1.amplifiers[0].usable);

@@ -71,6 +71,9 @@ public:
     static constexpr double kNoise = 10.0;
     static constexpr int kAmplifiers = 4;
 
+    /// What a total charge leaves in the central pixel.
+    static constexpr double kPeakShare = 1.0 / (2.0 * std::numbers::pi * kS * kS);
+
     struct Blob {
         int victim = 0, source = 0;
         int x = 0, y = 0;
@@ -78,9 +81,7 @@ public:
         [[nodiscard]] double total_e() const {
             return response * 2.0 * kS * std::sqrt(std::numbers::pi) * kNoise;
         }
-        [[nodiscard]] double peak_e() const {
-            return total_e() / (2.0 * std::numbers::pi * kS * kS);
-        }
+        [[nodiscard]] double peak_e() const { return total_e() * kPeakShare; }
     };
 
     EchoScene() {

@@ -1,10 +1,13 @@
 """A small simulated night, made once for each version of the program, that tests copy and damage."""
 import fcntl
 import hashlib
+import io
 import os
 import pathlib
 import shutil
 import subprocess
+
+from astropy.io import fits
 
 import scenario
 
@@ -65,3 +68,46 @@ def own(path):
     path.unlink()
     path.write_bytes(data)
     return path
+
+
+def write_changed(path, change):
+    """Rewrites one FITS file after change(hdus), with sums that hold, under its own name."""
+    with fits.open(io.BytesIO(path.read_bytes())) as hdus:
+        hdus[0].header.remove("FILESIZE", ignore_missing=True)  # astropy does not keep it
+        changed = change(hdus) or hdus
+        path.unlink()  # it may be shared with other copies of the night
+        changed.writeto(path, checksum=True)
+    return path
+
+
+def set_site(night, **values):
+    """Gives keys of the site file a value: set_site(night, stars="short.fits")."""
+    site = night / "site.yaml"
+    kept = [line for line in site.read_text().splitlines() if line.split(":")[0] not in values]
+    site.write_text("\n".join(kept + [f"{key}: {value}" for key, value in values.items()]) + "\n")
+
+
+def assessed(mask, predictor="crosstalk"):
+    """Detector: (state, reason) of one predictor, from a mask's ASSESSED table."""
+    with fits.open(mask) as hdus:
+        return {row["detector"]: (row["state"], row["reason"]) for row in hdus["ASSESSED"].data
+                if row["predictor"] == predictor}
+
+
+def bits(mask):
+    """Detector: image of bits; and the value of each bit's name, both from the file alone."""
+    with fits.open(mask) as hdus:
+        values = {row["name"]: int(row["value"]) for row in hdus["BITS"].data}
+        return {hdu.name: hdu.data.copy() for hdu in hdus if isinstance(hdu, fits.CompImageHDU)}, values
+
+
+def fraction(mask, bit):
+    """Detector: fraction of its pixels with the named bit."""
+    images, values = bits(mask)
+    return {name: float(((image & values[bit]) != 0).mean()) for name, image in images.items()}
+
+
+def hidden_files(folder):
+    """What a command may have left half written."""
+    folder = pathlib.Path(folder)
+    return [str(f) for f in folder.rglob("*") if f.name.startswith(".") or f.name.endswith(".partial")]

@@ -4,6 +4,7 @@
 #include <cmath>
 #include <cstdlib>
 #include <fmt/format.h>
+#include <iterator>
 #include <limits>
 #include <vector>
 
@@ -123,6 +124,8 @@ private:
         return digest_.detectors[static_cast<std::size_t>(ref.detector)]
             .amplifiers[static_cast<std::size_t>(ref.amplifier)];
     }
+    /// Is any amplifier read in step with one of this detector?
+    [[nodiscard]] bool could_receive(int detector) const;
     void add_victim(int victim, DetectorMarks& marks, FaintEchoes& faint) const;
     void add_pair(int victim, int source, const Sensitivity& sensitivity, DetectorMarks& marks,
                   FaintEchoes& faint) const;
@@ -138,6 +141,7 @@ private:
     const Params& params_;
     const ExposureDigest& digest_;
     DetectionContext context_;
+    int threads_;
     std::vector<std::shared_ptr<const SourceImage>> sources_;  ///< by flat index; null: no signal
     std::vector<UnknownSource> unknown_;
 };
@@ -149,6 +153,7 @@ CrosstalkPrediction::CrosstalkPrediction(const Camera& camera, const Params& par
       params_(params),
       digest_(digest),
       context_(context),
+      threads_(threads),
       sources_(static_cast<std::size_t>(params.amplifiers())) {
     parallel_for(params.amplifiers(), threads, [&](int flat) {
         const AmplifierDigest& amplifier = digest_of(flat);
@@ -175,13 +180,41 @@ double CrosstalkPrediction::saturated_level_adu(int flat) const {
     return std::max(0.0, amplifier.saturation_adu - digest_of(flat).bias_adu);
 }
 
+template <typename T>
+void append(std::vector<T>& to, std::vector<T>&& from) {
+    to.insert(to.end(), std::make_move_iterator(from.begin()), std::make_move_iterator(from.end()));
+}
+
+void join(DetectorMarks& to, DetectorMarks&& from) {
+    append(to.marks, std::move(from.marks));
+    append(to.regions, std::move(from.regions));
+    to.assessment.truncation_response =
+        std::max(to.assessment.truncation_response, from.assessment.truncation_response);
+}
+
+void join(FaintEchoes& to, FaintEchoes&& from) {
+    append(to.pairs, std::move(from.pairs));
+    to.marks += from.marks;
+}
+
+bool CrosstalkPrediction::could_receive(int detector) const {
+    const auto& amplifiers = camera_.detectors[static_cast<std::size_t>(detector)].amplifiers;
+    for (int a = 0; a < static_cast<int>(amplifiers.size()); ++a) {
+        if (!params_.sources_of(params_.flat({detector, a})).empty()) {
+            return true;
+        }
+    }
+    return false;
+}
+
 DetectorMarks CrosstalkPrediction::marks_on(int detector) const {
     const Detector& camera_detector = camera_.detectors[static_cast<std::size_t>(detector)];
     const DetectorDigest& digest = digest_.detectors[static_cast<std::size_t>(detector)];
     DetectorMarks marks;
     marks.assessment = {AssessmentState::assessed, "", params_.calibration()};
     const PixelBox whole{0, 0, camera_detector.width, camera_detector.height};
-    if (!digest.present || digest.psf.source == PsfSource::none) {
+    const bool blind = digest.psf.source == PsfSource::none && could_receive(detector);
+    if (!digest.present || blind) {
         marks.assessment.state = AssessmentState::unassessed;
         marks.assessment.reason = !digest.present ? digest.reason
                                                   : "no point-spread function: too few stars "
@@ -189,9 +222,18 @@ DetectorMarks CrosstalkPrediction::marks_on(int detector) const {
         marks.regions.push_back({whole, marks.assessment.reason});
         return marks;
     }
+    // Victims are independent: each fills its own part, and the parts are joined in order.
+    const auto victims = static_cast<int>(camera_detector.amplifiers.size());
+    std::vector<DetectorMarks> parts(static_cast<std::size_t>(victims));
+    std::vector<FaintEchoes> faint_parts(static_cast<std::size_t>(victims));
+    parallel_for(victims, threads_, [&](int a) {
+        add_victim(params_.flat({detector, a}), parts[static_cast<std::size_t>(a)],
+                   faint_parts[static_cast<std::size_t>(a)]);
+    });
     auto faint = std::make_unique<FaintEchoes>();
-    for (int a = 0; a < static_cast<int>(camera_detector.amplifiers.size()); ++a) {
-        add_victim(params_.flat({detector, a}), marks, *faint);
+    for (int a = 0; a < victims; ++a) {
+        join(marks, std::move(parts[static_cast<std::size_t>(a)]));
+        join(*faint, std::move(faint_parts[static_cast<std::size_t>(a)]));
     }
     if (!faint->pairs.empty()) {
         marks.faint = std::move(faint);
