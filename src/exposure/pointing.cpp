@@ -74,7 +74,7 @@ double corner_distance_deg(const Camera& camera, const Detector& detector) {
 MeasuredField measured_field(const Camera& camera, const ExposureDigest& digest) {
     MeasuredField field;
     struct Star {
-        double flux_e;
+        double flux_e = 0.0;
         FocalPoint place;
     };
     std::vector<Star> stars;
@@ -330,8 +330,10 @@ std::optional<Pointing> pointing_from_wcs(const Camera& camera, const ExposureDi
         const Detector& detector = camera.detectors[d];
         const Wcs wcs(cards, digest.detectors[d].raw_file, "WCS of " + detector.id);
         for (int i = 0; i < kPlaces * kPlaces; ++i) {
-            const DetectorPoint point{(i % kPlaces) * (detector.width - 1.0) / (kPlaces - 1),
-                                      (i / kPlaces) * (detector.height - 1.0) / (kPlaces - 1)};
+            const int column = i % kPlaces;
+            const int row = i / kPlaces;
+            const DetectorPoint point{column * (detector.width - 1.0) / (kPlaces - 1),
+                                      row * (detector.height - 1.0) / (kPlaces - 1)};
             places.push_back(focal_from_detector(camera.focal_plane, detector, point));
             sky.push_back(wcs.sky_from_detector(point));
         }

@@ -5,6 +5,7 @@
 #include <cmath>
 #include <cstdint>
 #include <limits>
+#include <tuple>
 
 namespace straymark {
 namespace {
@@ -54,7 +55,9 @@ private:
     struct Entry {
         std::int64_t x, y;
         int index;
-        auto operator<=>(const Entry&) const = default;
+        bool operator<(const Entry& other) const {
+            return std::tie(x, y, index) < std::tie(other.x, other.y, other.index);
+        }
     };
     [[nodiscard]] std::int64_t key(double mm) const {
         return static_cast<std::int64_t>(std::floor(mm / cell_mm_));
@@ -83,15 +86,15 @@ class ShiftVotes {
 public:
     explicit ShiftVotes(const MotionRange& range)
         : range_(range),
-          side_(2 * static_cast<int>(std::ceil(range.shift_mm / range.bin_mm)) + 2),
-          votes_(static_cast<std::size_t>(side_ * side_)) {}
+          half_(static_cast<int>(std::ceil(range.shift_mm / range.bin_mm)) + 1),
+          votes_(4 * static_cast<std::size_t>(half_) * static_cast<std::size_t>(half_)) {}
 
     void clear() { std::fill(votes_.begin(), votes_.end(), 0); }
     void add(double dx_mm, double dy_mm) {
         const int x = bin(dx_mm);
         const int y = bin(dy_mm);
-        if (x >= 0 && x < side_ && y >= 0 && y < side_) {
-            ++votes_[static_cast<std::size_t>(y * side_ + x)];
+        if (x >= 0 && x < 2 * half_ && y >= 0 && y < 2 * half_) {
+            ++votes_[index(x, y)];
         }
     }
 
@@ -101,8 +104,8 @@ public:
     };
     [[nodiscard]] Peak highest() const {
         Peak peak;
-        for (int y = 0; y + 1 < side_; ++y) {
-            for (int x = 0; x + 1 < side_; ++x) {
+        for (int y = 0; y + 1 < 2 * half_; ++y) {
+            for (int x = 0; x + 1 < 2 * half_; ++x) {
                 const int sum = at(x, y) + at(x + 1, y) + at(x, y + 1) + at(x + 1, y + 1);
                 if (sum > peak.votes) {
                     peak = {sum, corner(x + 1), corner(y + 1)};
@@ -114,15 +117,17 @@ public:
 
 private:
     [[nodiscard]] int bin(double shift_mm) const {
-        return static_cast<int>(std::floor(shift_mm / range_.bin_mm)) + side_ / 2;
+        return static_cast<int>(std::floor(shift_mm / range_.bin_mm)) + half_;
     }
-    [[nodiscard]] double corner(int index) const { return (index - side_ / 2) * range_.bin_mm; }
-    [[nodiscard]] int at(int x, int y) const {
-        return votes_[static_cast<std::size_t>(y * side_ + x)];
+    [[nodiscard]] double corner(int line) const { return (line - half_) * range_.bin_mm; }
+    [[nodiscard]] std::size_t index(int x, int y) const {
+        return static_cast<std::size_t>(y) * static_cast<std::size_t>(2 * half_) +
+               static_cast<std::size_t>(x);
     }
+    [[nodiscard]] int at(int x, int y) const { return votes_[index(x, y)]; }
 
     MotionRange range_;
-    int side_;
+    int half_;  ///< bins to each side of no shift
     std::vector<int> votes_;
 };
 

@@ -68,10 +68,10 @@ public:
 
 private:
     struct Query {
-        UnitVector centre;
-        double radius_deg;
+        UnitVector centre{};
+        double radius_deg = 0.0;
         std::optional<std::size_t> mag;
-        double faintest;
+        double faintest = 0.0;
     };
 
     [[nodiscard]] std::optional<std::size_t> mag_column(const std::string& filter) const {

@@ -156,9 +156,9 @@ StarCoverage write_star_list(const std::string& path, const SkyCells& cells, Sta
     Contents contents;
     const std::int64_t stars = sorter.count();
     write_stars(out, sorter, mag_columns, contents);
-    const StarCoverage coverage = declared.empty()
-                                      ? contents.coverage.found()
-                                      : StarCoverage{std::move(declared), kStarCellSize_deg, {}};
+    StarCoverage coverage = declared.empty()
+                                ? contents.coverage.found()
+                                : StarCoverage{std::move(declared), kStarCellSize_deg, {}};
     for (const FitsUnit& unit :
          {index_unit(contents, cells.zone_height_deg()), coverage_unit(coverage)}) {
         out.write(bytes_of(unit.header));

@@ -167,6 +167,8 @@ private:
         const std::int32_t cell_count = SkyCells(out.cell_size_deg).count();
         constexpr std::int64_t kRow = 4 + 8 + 4;
         const std::vector<std::byte> data = read_data(table, kRow, cell_count);
+        out.cells.reserve(static_cast<std::size_t>(table.data.rows));
+        out.first.reserve(static_cast<std::size_t>(table.data.rows) + 1);
         std::int64_t row = 0;
         std::int32_t last = -1;
         for (std::int64_t i = 0; i < table.data.rows; ++i) {
@@ -193,7 +195,7 @@ private:
 
     void read_discs(const Table& table, StarCoverage& out) const {
         constexpr std::int64_t kMostDiscs = 100000;
-        constexpr std::int64_t kRow = 3 * 8;
+        constexpr std::int64_t kRow = 24;  // three reals of 8 bytes
         const std::vector<std::byte> data = read_data(table, kRow, kMostDiscs);
         for (std::int64_t i = 0; i < table.data.rows; ++i) {
             const std::byte* const at = data.data() + i * kRow;

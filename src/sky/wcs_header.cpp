@@ -232,7 +232,7 @@ private:
     [[nodiscard]] std::string projection_code(const WcsCard& type) const {
         const std::string_view text = type.text;
         const bool equatorial = text.starts_with("RA---") || text.starts_with("DEC--");
-        const std::string code(equatorial ? text.substr(5) : "");
+        std::string code(equatorial ? text.substr(5) : "");
         if (code == "TNX" || code == "ZPX") {
             messages_.refuse(type.keyword,
                              fmt::format("'{}' ({} is not a standard projection)", text, code),
