@@ -118,6 +118,17 @@ TEST_CASE("echoes and deferred charge in the overscan do not move the bias") {
     CHECK(worst_error(bias_of(frame), drifting) < kLevelTolerance + 0.3);
 }
 
+TEST_CASE("deferred charge in half the columns of a narrow overscan does not move the bias") {
+    AmplifierFrame frame = blank_frame(8, flat, 7);
+    for (int j = 0; j < kSize; ++j) {
+        for (int i = 0; i < 4; ++i) {
+            pixel(frame, kSize + i, j) += 200.0F;
+        }
+    }
+    // The four columns left have sqrt(7) times the error of 28.
+    CHECK(worst_error(bias_of(frame), flat) < 2.65 * kLevelTolerance);
+}
+
 TEST_CASE("without overscan the prescan gives the bias, without either it is zero") {
     AmplifierFrame frame = blank_frame(32, flat, 5);
     frame.overscan.clear();
