@@ -13,6 +13,14 @@ straymark_script_test("structure: the include rule sees what is planted" 60
   ${PYTHON} tests/structure/include_rule_test.py)
 straymark_script_test("structure: format" 120 tests/format.sh --check)
 
+straymark_script_test("end to end: real frames and headers" 300
+  ${PYTHON} tests/end_to_end/real_frames_test.py $<TARGET_FILE:straymark>)
+straymark_script_test("end to end: a published coupling table" 300
+  ${PYTHON} tests/end_to_end/published_coupling_test.py $<TARGET_FILE:straymark>)
+straymark_script_test("end to end: a dense sum in numpy" 300
+  ${PYTHON} tests/end_to_end/dense_crosstalk_test.py $<TARGET_FILE:straymark>
+  ${CMAKE_CURRENT_BINARY_DIR}/small_night)
+
 # Benches: not tests, for a shared machine's times decide nothing. tests/bench/build_bench.py runs them.
 add_executable(mask_floor bench/mask_floor.cpp)
 target_link_libraries(mask_floor PRIVATE PkgConfig::cfitsio)

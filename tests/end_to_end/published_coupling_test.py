@@ -189,8 +189,8 @@ def faults_of_pixels(bits, echoes):
     area = flagged.sum() / (response >= 1.0).sum()
     print(f"{(response >= 1.5).sum()} pixels of response 1.5 or more, {complete:.4f} of them flagged; "
           f"area {area:.3f}")
-    return ([f"{complete:.4f} of the pixels that matter are flagged"] * (complete < 0.98) +
-            [f"flagged area {area:.3f} times the true one"] * (area > 1.15) +
+    return ([f"{complete:.4f} of the pixels that matter are flagged"] * bool(complete < 0.98) +
+            [f"flagged area {area:.3f} times the true one"] * bool(area > 1.15) +
             ["a negative echo was flagged"] * bool((bits & NEGATIVE).any()) +
             ["unassessed pixels with every pair measured"] * bool((bits & UNASSESSED).any()))
 
@@ -229,10 +229,10 @@ def faults_of_marks(marks, echoes):
     return faults
 
 
-def built(straymark, folder, raw_path):
-    straymark.must("build", "--site", folder / "site.yaml", raw_path)
-    with fits.open(folder / "masks" / "coupling.mask.fits") as mask:
-        return np.array(mask["ccd"].data), np.array(mask["MARKS"].data)
+def built(straymark, folder, what):
+    straymark.must("build", "--site", folder / "site.yaml", what)
+    with fits.open(folder / "masks" / "coupling.mask.fits", memmap=False) as mask:
+        return mask["ccd"].data, mask["MARKS"].data
 
 
 def main():
@@ -254,7 +254,7 @@ def main():
         for name, change in (("columns as sources", {"columns_are_sources": True}),
                              ("without the clipped regime", {"clipped": False})):
             write_product(folder / "calib" / "table.fits", table, **change)
-            bits, marks = built(straymark, folder, folder / "coupling.fits")
+            bits, marks = built(straymark, folder, "--from-digests")
             seen = faults_of_marks(marks, echoes)
             print(f"{name}: {len(seen)} faults seen")
             if not any("peak_e" in fault for fault in seen):

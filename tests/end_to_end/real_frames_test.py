@@ -138,8 +138,7 @@ class TheRealFrame(unittest.TestCase):
         for change, words in (
                 (("start: {date: DATE-OBS, time: UT}", "start: DATE-OBS"), "a date without a time"),
                 (('"48":', '"4.8":'), "FILTERS"),
-                (("prescan: 16", "prescan: 15"), None),
-                (("size: [512, 520]", "size: [536, 520]"), None),
+                (("size: [512, 520]", "size: [536, 520]"), "ste3.yaml"),
                 (("data: TRIMSEC", "data: BIASSEC"), "BIASSEC")):
             with self.subTest(change[1]), Example("ste3") as example:
                 camera = example.folder / "ste3.yaml"
@@ -147,13 +146,9 @@ class TheRealFrame(unittest.TestCase):
                 self.assertIn(change[0], text)
                 camera.write_text(text.replace(*change))
                 check = example.check(FRAME)
-                if change[1] == "prescan: 15":  # no header keyword says so: not seen
-                    self.assertEqual(check.returncode, 0, check.stderr)
-                    continue
-                self.assertNotEqual(check.returncode, 0)
-                self.assertNotEqual(example.build(FRAME).returncode, 0)
-                if words:
-                    self.assertIn(words, check.stderr)
+                self.assertEqual(check.returncode, 3)
+                self.assertIn(words, check.stderr)
+                self.assertEqual(example.build(FRAME).returncode, 1)
 
 
 class TheMosaicHeader(unittest.TestCase):
@@ -201,7 +196,7 @@ class TheMosaicHeader(unittest.TestCase):
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")
             expected = WCS(header).all_pix2world(grid, 1)
-        here = WCS(found).all_pix2world(grid, 1)
+            here = WCS(found).all_pix2world(grid, 1)
         # Numbers of 17 digits on both sides: rounding alone.
         np.testing.assert_allclose(here, expected, rtol=0, atol=1e-11)
         self.assertEqual(found["CTYPE1"], "RA---TPV")
