@@ -21,12 +21,20 @@ namespace {
 /// The thread sanitizer does not see how Debian's oneTBB hands work over, and would report every
 /// result as a race; plain threads it understands. What is tested is the bodies, not the library.
 void run_on_threads(int count, int threads, const std::function<void(int)>& body) {
+    static thread_local bool inside = false;
+    if (inside) {  // a nested call shares the outer call's threads
+        for (int i = 0; i < count; ++i) {
+            body(i);
+        }
+        return;
+    }
     std::atomic<int> next{0};
     std::mutex mutex;
     std::exception_ptr failure;
     std::vector<std::jthread> workers;
     for (int t = 0; t < std::min(count, threads); ++t) {
         workers.emplace_back([&] {
+            inside = true;
             for (int i = next.fetch_add(1); i < count; i = next.fetch_add(1)) {
                 try {
                     body(i);
