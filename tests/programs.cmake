@@ -12,6 +12,23 @@ straymark_script_test("structure: includes" 60
 straymark_script_test("structure: the include rule sees what is planted" 60
   ${PYTHON} tests/structure/include_rule_test.py)
 straymark_script_test("structure: format" 120 tests/format.sh --check)
+straymark_script_test("structure: lint" 1500
+  ${PYTHON} tests/structure/tidy.py ${PROJECT_SOURCE_DIR} ${PROJECT_BINARY_DIR})
+
+# A build of their own each, with its compilers on all cores: not beside other tests.
+straymark_script_test("sanitizers: addresses and undefined behaviour" 1800
+  tests/sanitize.sh asan-ubsan)
+straymark_script_test("sanitizers: threads" 1800 tests/sanitize.sh tsan)
+set_tests_properties("structure: lint" "sanitizers: addresses and undefined behaviour"
+  "sanitizers: threads" PROPERTIES RUN_SERIAL ON)
+
+add_executable(config_probe io/config_probe.cpp)
+target_link_libraries(config_probe PRIVATE straymark_io fmt::fmt)
+straymark_script_test("io: schemas and program give the same verdict" 120
+  ${PYTHON} tests/io/schema_test.py $<TARGET_FILE:config_probe> ${PROJECT_SOURCE_DIR})
+
+straymark_script_test("study: a small sabotage" 600
+  tests/study/small_sabotage.sh $<TARGET_FILE:straymark> ${CMAKE_CURRENT_BINARY_DIR}/sabotage_night)
 
 straymark_script_test("end to end: real frames and headers" 300
   ${PYTHON} tests/end_to_end/real_frames_test.py $<TARGET_FILE:straymark>)
