@@ -4,6 +4,8 @@
 set -euo pipefail
 here=$(cd -- "$(dirname -- "${BASH_SOURCE[0]}")" && pwd)
 cd "$here/.."
+# A second clone reuses what the first one compiled.
+export CCACHE_BASEDIR=$PWD CCACHE_NOHASHDIR=1
 echo "== Set-up: Debian packages"
 bash config/setup.sh all
 echo "== Build: build/release"

@@ -4,6 +4,7 @@
 #   tsan:       the rooms that share work between threads, and the program on a small night.
 set -euo pipefail
 cd "$(dirname -- "${BASH_SOURCE[0]}")/.."
+export CCACHE_BASEDIR=$PWD CCACHE_NOHASHDIR=1
 preset=$1
 build=build/$preset
 export ASAN_OPTIONS=detect_leaks=1:abort_on_error=0 UBSAN_OPTIONS=print_stacktrace=1

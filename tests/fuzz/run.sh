@@ -26,9 +26,12 @@ for name in "${names[@]}"; do
         star) cp -n demo_data/stars/*.csv "$corpus"/ 2>/dev/null || true ;;
     esac
     echo "== $name, $seconds s"
-    "build/fuzz/tests/${name}_fuzz" -max_total_time="$seconds" -timeout=10 -rss_limit_mb=2048 \
-        -max_len=65536 -print_final_stats=1 -verbosity=0 "$corpus" 2>&1 |
-        grep -E "stat::number_of_executed_units|ERROR|SUMMARY|Test unit written" || true
-    [ "${PIPESTATUS[0]}" -eq 0 ] || exit 1
+    log=build/fuzz/$name.log
+    if ! "build/fuzz/tests/${name}_fuzz" -max_total_time="$seconds" -timeout=10 -rss_limit_mb=2048 \
+        -max_len=65536 -print_final_stats=1 -verbosity=0 "$corpus" >"$log" 2>&1; then
+        tail -40 "$log"
+        exit 1
+    fi
+    grep "number_of_executed_units" "$log"
 done
 echo "no crash"
