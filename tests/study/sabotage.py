@@ -1,12 +1,14 @@
 #!/usr/bin/env python3
 """Does `score` notice a wrong camera file or product?
 
-Takes a simulated night (the folder that `straymark simulate` wrote, its star list imported), spoils
-one thing at a time in a copy of its camera file or crosstalk product, builds masks with that and
-scores them against the truth. The unchanged night must meet every figure, and each sabotage must
-make at least one figure fail. Prints a table; the exit status is 0 only then.
+Takes a simulated night (the folder that `straymark simulate` wrote, its star list imported; or a
+scenario, which is simulated first), spoils one thing at a time in a copy of its camera file or
+crosstalk product, builds masks with that and scores them against the truth. The unchanged night must
+meet every figure, and each sabotage must make at least one figure fail. Prints a table; the exit
+status is 0 only then.
 
     /usr/bin/python3 tests/study/sabotage.py build/release/straymark demo_data/night
+    /usr/bin/python3 tests/study/sabotage.py build/release/straymark tests/study/small_night.yaml
 
 Needs Debian's python3-astropy, python3-numpy and python3-yaml.
 """
@@ -157,7 +159,7 @@ class Product:
         pairs["coefficient"][row] = lags["coefficient"][to_zero][0] if to_zero.any() else 0.0
         for column in lags:
             kept = lags[column][~to_zero]
-            lags[column] = np.append(kept, np.array([first[column]], kept.dtype if kept.dtype.kind != "U" else None))
+            lags[column] = np.concatenate([kept, np.array([first[column]])])
 
 
 def read_table(path):
@@ -308,19 +310,35 @@ def baseline(options, night, folder):
 def arguments():
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("straymark", help="the program")
-    parser.add_argument("night", type=pathlib.Path, help="folder that `straymark simulate` wrote")
+    parser.add_argument("night", type=pathlib.Path, help="folder that `straymark simulate` wrote, or a scenario file")
     parser.add_argument("--exposures", type=int, default=0, help="use the first N only (default: all)")
     parser.add_argument("--only", nargs="*", help="names of sabotages to try (default: all)")
     parser.add_argument("--threads", type=int, default=2)
     options = parser.parse_args()
     options.straymark = str(pathlib.Path(options.straymark).resolve())
-    options.truth = sorted((options.night / "truth").glob("*.truth.fits"))
-    options.truth = [path.resolve() for path in options.truth[: options.exposures or None]]
-    wanted = {path.name.removesuffix(".truth.fits") for path in options.truth}
-    options.raw = [p for p in sorted((options.night / "raw").resolve().iterdir()) if p.name.split(".")[0] in wanted]
-    if not options.truth or not options.raw:
-        parser.error(f"{options.night}: no raw exposures with their truth")
     return options
+
+
+def simulated(options, folder):
+    """The night's folder, made from a scenario where that was given."""
+    if options.night.is_dir():
+        return options.night
+    for arguments in (
+        ("simulate", str(options.night), "--out", str(folder)),
+        ("stars", "import", str(folder / "stars.csv"), "--out", str(folder / "stars.fits")),
+    ):
+        subprocess.run([options.straymark, *arguments, "--quiet"], check=True)
+    return folder
+
+
+def choose_exposures(options):
+    """Sets the truth files and raw files to use."""
+    truth = sorted((options.night / "truth").resolve().glob("*.truth.fits"))
+    options.truth = truth[: options.exposures or None]
+    names = {path.name.removesuffix(".truth.fits") for path in options.truth}
+    options.raw = [p for p in sorted((options.night / "raw").resolve().iterdir()) if p.stem in names]
+    if not options.truth or len(options.raw) != len(options.truth):
+        sys.exit(f"{options.night}: {len(options.raw)} raw exposures, {len(options.truth)} with their truth")
 
 
 def main():
@@ -328,6 +346,8 @@ def main():
     survivors = 0
     with tempfile.TemporaryDirectory(prefix="sabotage") as work:
         work = pathlib.Path(work)
+        options.night = simulated(options, work / "night")
+        choose_exposures(options)
         good, result = baseline(options, options.night, work / "unchanged")
         if not result.get("pairs"):
             sys.exit("nothing to spoil: no echo was compared")
