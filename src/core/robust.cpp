@@ -340,24 +340,11 @@ RobustStats clipped_normal(std::span<const float> values) {
     if (looked.empty()) {
         return stats;
     }
-    RoughCore core = rough_core(looked);
+    const RoughCore core = rough_core(looked);
     stats.location = core.location;
     stats.scale = core.scale;
-    constexpr int kMostHistograms = 5;
-    for (int round = 0; core.scale > 0.0 && round < kMostHistograms; ++round) {
-        const Histogram histogram = histogram_about(looked, core);
-        fit_core(histogram, stats.location, stats.scale);
-        // A rough core that was far off gave bins too coarse, too fine, or in the wrong place.
-        const double ratio = stats.scale / core.scale;
-        const bool served =
-            ratio > 0.6 && ratio < 1.6 && std::abs(stats.location - core.location) < core.scale;
-        core.scale = std::max(stats.scale, 0.4 * core.quantum);
-        if (core.quantum == 0.0) {
-            core.location = stats.location;
-        }
-        if (served) {
-            break;
-        }
+    if (core.scale > 0.0) {
+        fit_core(histogram_about(looked, core), stats.location, stats.scale);
     }
     return stats;
 }

@@ -82,13 +82,15 @@ constexpr std::array kAxes{SerialAxis::x, SerialAxis::y};
 TEST_CASE("every pixel has the tick and row at which a clocked device delivers it") {
     constexpr PixelBox kSection{5, 2, 12, 6};  // 7 x 4, away from the origin
     constexpr int kPrescan = 3;
+    constexpr int kDiscarded = 5;  // rows read before the section's first
     for (const Corner corner : kCorners) {
         for (const SerialAxis serial : kAxes) {
             INFO("corner " << static_cast<int>(corner) << ", serial " << static_cast<int>(serial));
-            const ReadoutGeometry readout(kSection, corner, serial, kPrescan);
+            const ReadoutGeometry readout(kSection, corner, serial, kPrescan, kDiscarded);
             ClockedDevice device(kSection, corner, serial);
             int delivered = 0;
-            for (int row = 0; row < (serial == SerialAxis::x ? 4 : 7); ++row) {
+            const int rows = serial == SerialAxis::x ? 4 : 7;
+            for (int row = kDiscarded; row < kDiscarded + rows; ++row) {
                 int tick = kPrescan;  // the register's empty elements come out first
                 for (const auto& packet : device.shift_row()) {
                     REQUIRE(packet.has_value());
