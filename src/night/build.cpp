@@ -244,7 +244,7 @@ bool BuildReport::nothing_done() const {
 BuildReport build_from_raw(const Site& site, const NightPorts& ports,
                            const std::vector<std::string>& raw_files, int threads,
                            const BuildProgress& progress) {
-    NightPlan plan = plan_night(ports.raw, raw_files, threads);
+    NightPlan plan = plan_night(ports.raw, ports.masks, raw_files, threads);
     BuildReport report;
     report.skipped = std::move(plan.skipped);
     NightBuilder builder(site, ports, threads);

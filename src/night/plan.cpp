@@ -2,7 +2,6 @@
 
 #include <algorithm>
 #include <cmath>
-#include <filesystem>
 #include <fmt/format.h>
 #include <map>
 #include <optional>
@@ -15,18 +14,15 @@
 namespace straymark {
 namespace {
 
-std::string base_name(const std::string& path) {
-    return std::filesystem::path(path).filename().string();
-}
-
-/// Two paths with one base name would claim one mask file.
-void skip_clashing_names(std::vector<std::string>& paths, std::vector<Skipped>& skipped) {
-    std::map<std::string, std::vector<std::string>> by_name;
+/// Two raw files of one name, but for folder and extension, would claim one mask file.
+void skip_clashing_names(const MaskStore& masks, std::vector<std::string>& paths,
+                         std::vector<Skipped>& skipped) {
+    std::map<std::string, std::vector<std::string>> by_mask;
     for (const std::string& path : paths) {
-        by_name[base_name(path)].push_back(path);
+        by_mask[masks.path_of(path)].push_back(path);
     }
     std::erase_if(paths, [&](const std::string& path) {
-        const auto& same = by_name[base_name(path)];
+        const auto& same = by_mask[masks.path_of(path)];
         if (same.size() < 2) {
             return false;
         }
@@ -88,12 +84,13 @@ std::optional<std::string> conflict_of(const std::vector<RawFile>& files) {
 
 }  // namespace
 
-NightPlan plan_night(const RawReader& reader, const std::vector<std::string>& paths, int threads) {
+NightPlan plan_night(const RawReader& reader, const MaskStore& masks,
+                     const std::vector<std::string>& paths, int threads) {
     NightPlan plan;
     std::vector<std::string> sorted = paths;
     std::sort(sorted.begin(), sorted.end());
     sorted.erase(std::unique(sorted.begin(), sorted.end()), sorted.end());
-    skip_clashing_names(sorted, plan.skipped);
+    skip_clashing_names(masks, sorted, plan.skipped);
 
     std::map<std::string, std::vector<RawFile>> by_id;
     std::map<std::string, std::string> by_content;

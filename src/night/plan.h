@@ -27,9 +27,10 @@ struct NightPlan {
     std::vector<Skipped> skipped;
 };
 
-/// Looks at every file and sorts them into exposures. A bad file, two files of one name, two
+/// Looks at every file and sorts them into exposures. A bad file, two files of one mask, two
 /// different contents for one detector of one exposure, headers of one exposure that disagree: each
 /// is skipped and said, and the rest goes on. The same result for any order of `paths`.
-NightPlan plan_night(const RawReader& reader, const std::vector<std::string>& paths, int threads);
+NightPlan plan_night(const RawReader& reader, const MaskStore& masks,
+                     const std::vector<std::string>& paths, int threads);
 
 }  // namespace straymark
