@@ -28,10 +28,19 @@ straymark_script_test("io: schemas and program give the same verdict" 120
   ${PYTHON} tests/io/schema_test.py $<TARGET_FILE:config_probe> ${PROJECT_SOURCE_DIR})
 
 straymark_script_test("study: a small sabotage" 600
-  tests/study/small_sabotage.sh $<TARGET_FILE:straymark> ${CMAKE_CURRENT_BINARY_DIR}/sabotage_night)
+  ${PYTHON} tests/study/sabotage.py $<TARGET_FILE:straymark> tests/study/small_night.yaml)
 
 straymark_script_test("end to end: real frames and headers" 300
   ${PYTHON} tests/end_to_end/real_frames_test.py $<TARGET_FILE:straymark>)
+straymark_script_test("end to end: a night" 600
+  ${PYTHON} tests/end_to_end/night_test.py $<TARGET_FILE:straymark>
+  ${CMAKE_CURRENT_BINARY_DIR}/night_work)
+straymark_script_test("end to end: bad input" 600
+  ${PYTHON} tests/end_to_end/bad_input_test.py $<TARGET_FILE:straymark>
+  ${CMAKE_CURRENT_BINARY_DIR}/bad_input_work)
+straymark_script_test("end to end: death at any moment" 600
+  ${PYTHON} tests/end_to_end/kill_test.py $<TARGET_FILE:straymark>
+  ${CMAKE_CURRENT_BINARY_DIR}/kill_work)
 straymark_script_test("end to end: a published coupling table" 300
   ${PYTHON} tests/end_to_end/published_coupling_test.py $<TARGET_FILE:straymark>)
 straymark_script_test("end to end: a dense sum in numpy" 300

@@ -1,3 +1,5 @@
+#include <cerrno>
+#include <csignal>
 #include <cstdio>
 #include <exception>
 #include <new>
@@ -30,12 +32,23 @@ int run(int argc, char** argv) {
     } catch (const CLI::ParseError& error) {
         return line.app.exit(error) == 0 ? kDone : kWrongUse;
     }
-    return line.run();
+    const int status = line.run();
+    if (std::fflush(stdout) != 0 || std::ferror(stdout) != 0) {
+        throw SystemError("standard output", "write", errno);
+    }
+    return status;
+}
+
+/// A file size limit and a reader that went away are errors of one write, not the end of a night.
+void take_signals_as_errors() {
+    std::signal(SIGXFSZ, SIG_IGN);
+    std::signal(SIGPIPE, SIG_IGN);
 }
 
 }  // namespace
 
 int main(int argc, char** argv) {
+    take_signals_as_errors();
     try {
         if (argc > 1 && std::string_view(argv[1]) == io::kDecodeArgument) {
             return io::isolated_decode_main(argc, argv);

@@ -35,8 +35,8 @@ double huber_location(std::span<const double> values, double scale, double k = 1
 /// cumulative distribution), so truncation, tail and whole-number values bias neither. For a core
 /// with 5 % of stars on top: location and scale to 1 % of the scale, plus the statistical error.
 /// At most 131,072 values, evenly strided, are looked at; `count` says how many
-/// were finite. Deterministic. Values most of which are equal have scale 0, unless they come in even
-/// steps, as raw counts do: then noise down to a third of a step is found.
+/// were finite. Deterministic. Values most of which are equal have scale 0, unless they come in
+/// even steps, as raw counts do: then noise down to a third of a step is found.
 RobustStats clipped_normal(std::span<const float> values);
 
 }  // namespace straymark

@@ -2,7 +2,6 @@
 
 #include <algorithm>
 #include <cmath>
-#include <filesystem>
 #include <fmt/format.h>
 #include <map>
 #include <optional>
@@ -15,19 +14,15 @@
 namespace straymark {
 namespace {
 
-std::string base_name(const std::string& path) {
-    return std::filesystem::path(path).filename().string();
-}
-
-/// Two files of one name, but for folder and extension, would claim one mask file.
+/// Two raw files of one name, but for folder and extension, would claim one mask file.
 void skip_clashing_names(const MaskStore& masks, std::vector<std::string>& paths,
                          std::vector<Skipped>& skipped) {
-    std::map<std::string, std::vector<std::string>> by_name;
+    std::map<std::string, std::vector<std::string>> by_mask;
     for (const std::string& path : paths) {
-        by_name[masks.path_of(base_name(path))].push_back(path);
+        by_mask[masks.path_of(path)].push_back(path);
     }
     std::erase_if(paths, [&](const std::string& path) {
-        const auto& same = by_name[masks.path_of(base_name(path))];
+        const auto& same = by_mask[masks.path_of(path)];
         if (same.size() < 2) {
             return false;
         }

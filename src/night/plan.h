@@ -27,8 +27,7 @@ struct NightPlan {
     std::vector<Skipped> skipped;
 };
 
-/// Looks at every file and sorts them into exposures. A bad file, two files that
-/// claim one mask, two
+/// Looks at every file and sorts them into exposures. A bad file, two files of one mask, two
 /// different contents for one detector of one exposure, headers of one exposure that disagree: each
 /// is skipped and said, and the rest goes on. The same result for any order of `paths`.
 NightPlan plan_night(const RawReader& reader, const MaskStore& masks,

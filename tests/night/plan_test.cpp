@@ -47,7 +47,8 @@ public:
         return nullptr;
     }
     [[nodiscard]] std::string path_of(const std::string& raw_file) const override {
-        return "masks/" + raw_file.substr(0, raw_file.find('.')) + ".mask.fits";
+        const std::string name = raw_file.substr(raw_file.find('/') + 1);
+        return "masks/" + name.substr(0, name.find('.')) + ".mask.fits";
     }
 };
 
