@@ -90,7 +90,10 @@ std::string DigestFolder::path_of(const std::string& id) const {
 }
 
 void DigestFolder::save(const ExposureDigest& digest) {
-    make_folder(folder_);
+    std::call_once(prepared_, [this] {
+        make_folder(folder_);
+        remove_left_behind(folder_);
+    });
     HeaderCards primary;
     primary.add_text("FORMAT", kFormat, "what this file is");
     primary.add_text("OBS_ID", escaped_text(digest.header.id), "exposure");

@@ -1,5 +1,6 @@
 #pragma once
 
+#include <mutex>
 #include <optional>
 #include <string>
 #include <vector>
@@ -28,6 +29,7 @@ public:
 
 private:
     std::string folder_;
+    std::once_flag prepared_;
 };
 
 }  // namespace straymark::io

@@ -9,6 +9,7 @@
 #include <filesystem>
 #include <fmt/format.h>
 #include <memory>
+#include <sys/file.h>
 #include <sys/stat.h>
 #include <sys/uio.h>
 #include <system_error>
@@ -38,6 +39,13 @@ void check(bool succeeded, FileOperation operation, const std::string& path, con
 
 std::string hex(const XXH128_hash_t& hash) {
     return fmt::format("xxh128:{:016x}{:016x}", hash.high64, hash.low64);
+}
+
+constexpr const char* kPartialEnding = ".partial";
+
+bool is_unlinked(int descriptor) {
+    struct stat status {};
+    return ::fstat(descriptor, &status) == 0 && status.st_nlink == 0;
 }
 
 std::string folder_of(const std::string& path) {
@@ -139,17 +147,39 @@ std::string bytes_digest(std::span<const std::byte> bytes) {
 }
 
 OutputFile::OutputFile(std::string path) : path_(std::move(path)) {
+    check(true, FileOperation::create, path_, "create");
+    create();
+    while (::flock(handle_.get(), LOCK_EX) == 0 && is_unlinked(handle_.get())) {
+        create();  // somebody took it for left behind before it was locked
+    }
+}
+
+void OutputFile::create() {
     static std::atomic<unsigned> serial{0};
     const std::filesystem::path final_path(path_);
     temporary_path_ = (std::filesystem::path(folder_of(path_)) /
-                       fmt::format(".{}.{}-{}.partial", final_path.filename().string(), ::getpid(),
-                                   serial.fetch_add(1)))
+                       fmt::format(".{}.{}-{}{}", final_path.filename().string(), ::getpid(),
+                                   serial.fetch_add(1), kPartialEnding))
                           .string();
-    check(true, FileOperation::create, path_, "create");
     handle_ = FileHandle(
         ::open(temporary_path_.c_str(), O_RDWR | O_CREAT | O_EXCL | O_CLOEXEC | O_NOFOLLOW, 0644));
     if (handle_.get() < 0) {
         throw SystemError(path_, "create", errno);
+    }
+}
+
+void remove_left_behind(const std::string& folder) {
+    std::error_code error;
+    for (const auto& entry : std::filesystem::directory_iterator(folder, error)) {
+        const std::string name = entry.path().filename().string();
+        if (!name.starts_with('.') || !name.ends_with(kPartialEnding)) {
+            continue;
+        }
+        const FileHandle file(
+            ::open(entry.path().c_str(), O_RDWR | O_CLOEXEC | O_NOFOLLOW | O_NONBLOCK));
+        if (file.get() >= 0 && ::flock(file.get(), LOCK_EX | LOCK_NB) == 0) {
+            ::unlink(entry.path().c_str());  // its writer is dead, or it would hold the lock
+        }
     }
 }
 

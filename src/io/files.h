@@ -78,10 +78,15 @@ public:
     [[nodiscard]] const std::string& temporary_path() const { return temporary_path_; }
 
 private:
+    void create();
     std::string path_, temporary_path_;
     FileHandle handle_;
     bool committed_ = false;
 };
+
+/// Removes the temporary files of outputs whose writer died; those being written are locked and
+/// stay.
+void remove_left_behind(const std::string& folder);
 
 void write_text(const std::string& path, const std::string& text);
 /// Creates the folder and its parents.

@@ -116,7 +116,10 @@ std::optional<MaskSummary> MaskFolder::existing(const std::string& raw_file) con
 }
 
 std::unique_ptr<MaskFileWriter> MaskFolder::begin(const std::string& raw_file) {
-    make_folder(folder_);
+    std::call_once(prepared_, [this] {
+        make_folder(folder_);
+        remove_left_behind(folder_);
+    });
     return std::make_unique<FolderMaskWriter>(path_of(raw_file));
 }
 

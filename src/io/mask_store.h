@@ -1,6 +1,7 @@
 #pragma once
 
 #include <memory>
+#include <mutex>
 #include <optional>
 #include <string>
 
@@ -22,6 +23,7 @@ public:
 
 private:
     std::string folder_;
+    std::once_flag prepared_;
 };
 
 }  // namespace straymark::io

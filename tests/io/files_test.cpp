@@ -178,3 +178,18 @@ TEST_CASE("a result in a folder that does not exist is an error of the system") 
     const TemporaryFolder folder;
     CHECK_THROWS_AS(OutputFile(folder.file("missing/result")), SystemError);
 }
+
+TEST_CASE("What a dead writer left behind is removed; what is being written stays") {
+    const test::TemporaryFolder folder;
+    const std::string left = folder.write(".mask.fits.4194305-0.partial", "half a file");
+    folder.write("mask.fits", "whole");
+    folder.write(".hidden", "not ours");
+    io::OutputFile in_the_making(folder.file("other.fits"));
+    io::remove_left_behind(folder.file(""));
+    CHECK_FALSE(std::filesystem::exists(left));
+    CHECK(std::filesystem::exists(folder.file("mask.fits")));
+    CHECK(std::filesystem::exists(folder.file(".hidden")));
+    CHECK(std::filesystem::exists(in_the_making.temporary_path()));
+    in_the_making.commit();
+    CHECK(std::filesystem::exists(folder.file("other.fits")));
+}
