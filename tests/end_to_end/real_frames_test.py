@@ -140,6 +140,7 @@ class TheRealFrame(unittest.TestCase):
                 (("start: {date: DATE-OBS, time: UT}", "start: DATE-OBS"), "a date without a time", 3),
                 (('"48":', '"4.8":'), "FILTERS", 3),
                 (("size: [512, 520]", "size: [536, 520]"), "ste3.yaml", 1),
+                (("512", "536"), "TRIMSEC", 3),
                 (("data: TRIMSEC", "data: BIASSEC"), "BIASSEC", 3)):
             with self.subTest(change[1]), Example("ste3") as example:
                 camera = example.folder / "ste3.yaml"
