@@ -299,6 +299,32 @@ TEST_CASE("One image of the trimmed detector holds every amplifier at its sectio
     CHECK(mentions(fault_of(camera, builder.bytes()), "order: detector"));
 }
 
+TEST_CASE("A detector section may turn one image of all amplifiers round") {
+    Camera camera = small_camera();
+    camera.raw.hdu = "{detector}";
+    camera.raw.data.reset();
+    camera.raw.detector_section = "DETSEC";
+    FitsBuilder builder(exposure_cards());
+    // The file's first pixel is the detector's last: FITS (8, 6).
+    builder.image("D1", 8, 6, place_pixels(8, 6), {text_card("DETSEC", "[8:1,6:1]")});
+    const auto left = by_readout(frame_of(camera, builder.bytes(), 0));
+    REQUIRE(left.size() == 24);
+    CHECK(left.at({0, 0}) == 6008.0F);
+    CHECK(left.at({3, 5}) == 1005.0F);
+    const auto right = by_readout(frame_of(camera, builder.bytes(), 1));
+    CHECK(right.at({0, 0}) == 1001.0F);
+    CHECK(right.at({3, 5}) == 6004.0F);
+    // The same with a lower and an upper half.
+    camera.detectors[0].amplifiers = {
+        half_detector("a01", "A", {0, 0, 8, 3}, Corner::lower_left, 0),
+        half_detector("a02", "B", {0, 3, 8, 6}, Corner::upper_right, 0)};
+    const auto lower = by_readout(frame_of(camera, builder.bytes(), 0));
+    REQUIRE(lower.size() == 24);
+    CHECK(lower.at({0, 0}) == 6008.0F);
+    CHECK(lower.at({7, 2}) == 4001.0F);
+    CHECK(by_readout(frame_of(camera, builder.bytes(), 1)).at({7, 2}) == 3008.0F);
+}
+
 TEST_CASE("Sections with a suffix for each amplifier place several amplifiers in one image") {
     // As one real mosaic camera writes them (tests/reference/wcs).
     Camera camera = small_camera();
