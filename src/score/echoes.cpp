@@ -168,20 +168,28 @@ private:
         const double width = width_of(echo);
         if (group.echoes.size() == 1 && group.marks.size() == 1 && width >= kOneSigned &&
             width <= kCompact) {
-            judge_place(found_.marks[group.marks.front()], largest_response_near(peak, echo.peak_e),
-                        result);
+            judge_place(found_.marks[group.marks.front()], echo, result);
         }
         return result;
     }
 
-    void judge_place(const FoundMark& mark, DetectorPixel place, RequiredEcho& result) const {
+    void judge_place(const FoundMark& mark, const TrueEcho& echo, RequiredEcho& result) const {
         const DetectorPixel marked = pixel_of(mark.x_px, mark.y_px);
+        const DetectorPixel place =
+            largest_response_near(pixel_of(echo.x_px, echo.y_px), echo.peak_e);
         const auto there = static_cast<double>(response_[index_of(marked)]);
         const auto largest = static_cast<double>(response_[index_of(place)]);
         result.place_judged = true;
-        if (there / largest < 1.0 - kSameResponse) {
-            result.dx_px = mark.x_px - place.x;
-            result.dy_px = mark.y_px - place.y;
+        if (there / largest >= 1.0 - kSameResponse) {
+            return;
+        }
+        result.dx_px = mark.x_px - place.x;
+        result.dy_px = mark.y_px - place.y;
+        const double own_dx = mark.x_px - echo.x_px;
+        const double own_dy = mark.y_px - echo.y_px;
+        if (std::hypot(own_dx, own_dy) < std::hypot(result.dx_px, result.dy_px)) {
+            result.dx_px = own_dx;
+            result.dy_px = own_dy;
         }
     }
 

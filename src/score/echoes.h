@@ -19,9 +19,9 @@ struct RequiredEcho {
     std::string victim, source;
     bool flagged = false;  ///< the pixel of its peak carries the bit of its sign
     bool listed = false;   ///< a mark of the same source lies on it, in the same victim
-    /// The place of the mark's largest response minus that of the true one within kPlaceSearchPx,
-    /// zero where the true response at both is the same within kSameResponse; judged only for
-    /// compact echoes with a mark of their own.
+    /// How far the mark's place lies from the echo's, judged only for compact echoes with a mark of
+    /// their own. The echo's place is its own peak or that of the true response near by, whichever
+    /// is nearer to the mark: noise moves the one by a pixel, neighbours move the other.
     bool place_judged = false;
     double dx_px = 0.0;
     double dy_px = 0.0;

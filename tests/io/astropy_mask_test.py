@@ -38,7 +38,7 @@ def check_images(mask, plain):
 
 
 def check_bits(rows):
-# The contract on bits, written out a second time (docs/mask_file.md).
+    # The contract on bits, written out a second time (docs/mask_file.md).
     names = ("saturated bleed crosstalk_positive crosstalk_negative ghost spike persistence defect "
              "marginal crosstalk_unassessed ghost_unassessed spike_unassessed "
              "persistence_unassessed").split()

@@ -111,6 +111,11 @@ public:
         }
     }
 
+    void add(const Blob& blob) {
+        blobs.push_back(blob);
+        add_signal(blob);
+    }
+
     static std::string name(int amplifier) { return fmt::format("d1/a{:02}", amplifier + 1); }
 
     /// A mask by the closed form. `blob`s as the mask's maker believes them to be.

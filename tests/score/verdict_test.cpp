@@ -100,6 +100,17 @@ TEST_CASE("A pair whose echoes are predicted one pixel off is found out") {
     CHECK(unmet(scene, believed).contains("pairs"));
 }
 
+TEST_CASE("A pair whose echoes lie beside stronger ones is not taken for misplaced") {
+    EchoScene scene;
+    // The echoes of a02 in a01 are negative, and so are those of a04 that are put 4 px beside them:
+    // the true response grows from each towards its neighbour.
+    for (std::size_t i = 0; i < 3; ++i) {
+        const Blob& weak = scene.blobs[i];
+        scene.add({weak.victim, 3, weak.x + 4, weak.y, 4.0 * weak.response});
+    }
+    CHECK_FALSE(unmet(scene, scene.blobs).contains("pairs"));
+}
+
 TEST_CASE("All echoes shifted by two pixels fail as pixels") {
     const EchoScene scene;
     std::vector<Blob> believed = scene.blobs;
