@@ -12,14 +12,12 @@ straymark_script_test("structure: includes" 60
 straymark_script_test("structure: the include rule sees what is planted" 60
   ${PYTHON} tests/structure/include_rule_test.py)
 straymark_script_test("structure: format" 120 tests/format.sh --check)
-straymark_script_test("structure: lint" 1500
-  ${PYTHON} tests/structure/tidy.py ${PROJECT_SOURCE_DIR} ${PROJECT_BINARY_DIR})
 
 # A build of their own each, with its compilers on all cores: not beside other tests.
 straymark_script_test("sanitizers: addresses and undefined behaviour" 1800
   tests/sanitize.sh asan-ubsan)
 straymark_script_test("sanitizers: threads" 1800 tests/sanitize.sh tsan)
-set_tests_properties("structure: lint" "sanitizers: addresses and undefined behaviour"
+set_tests_properties("sanitizers: addresses and undefined behaviour"
   "sanitizers: threads" PROPERTIES RUN_SERIAL ON)
 
 add_executable(config_probe io/config_probe.cpp)

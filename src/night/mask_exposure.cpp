@@ -177,7 +177,9 @@ void write_masks(const Site& site, MaskStore& store, const PredictorsInForce& pr
                  ExposureReport& report) {
     const ExposureMarks marks(site, predictors, digest, threads);
     MaskPool pool;
-    for (const auto& [raw_file, detectors] : detectors_by_file(site.camera, digest)) {
+    for (const auto& file : detectors_by_file(site.camera, digest)) {
+        const std::string& raw_file = file.first;
+        const std::vector<int>& detectors = file.second;
         const std::unique_ptr<MaskFileWriter> writer = store.begin(raw_file);
         std::vector<MaskFileTables> parts(detectors.size());
         std::vector<PixelFractions> part_fractions(detectors.size());
